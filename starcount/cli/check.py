@@ -1,0 +1,40 @@
+"""``starcount check``."""
+
+from pathlib import Path
+
+import click
+
+from starcount.cli import screen
+
+
+@click.command()
+@click.argument("survey", type=Path)
+@screen.json_option
+def check(survey: Path, as_json: bool) -> None:
+    """Say everything that is wrong with a survey's files, at once.
+
+    SURVEY is a folder with a survey.toml, or that file. Nothing is written.
+    """
+    from starcount import steps
+
+    record = steps.check(survey)
+    screen.show(record, _lines(record), as_json)
+
+
+def _lines(record: dict) -> list[str]:
+    head = ["group", "band", "fields", "area [deg2]", "bins", "from", "to [mag]", "stars"]
+    rows = [
+        [
+            group["name"],
+            group["band"],
+            str(group["fields"]),
+            f"{group['area_deg2']:.2f}",
+            str(group["bins"]),
+            f"{group['m_lo_mag']:g}",
+            f"{group['m_hi_mag']:g}",
+            "not counted" if group["stars"] is None else str(group["stars"]),
+        ]
+        for group in record["groups"]
+    ]
+    invented = " (invented)" if record["invented"] else ""
+    return [f"{record['survey']}{invented}: in order", *screen.columns([head, *rows])]

@@ -1,0 +1,159 @@
+"""What the commands print: results on standard output, everything else on standard error."""
+
+import json
+import sys
+import time
+from collections.abc import Callable, Iterable, Iterator, Sequence
+from contextlib import contextmanager
+
+import click
+
+Progress = Callable[[str, float], None]
+"""``progress(what, share)``, called by a step as it goes; the share that is done lies between 0 and 1."""
+
+QUIET_S = 2.0
+"""Work shorter than this shows no progress."""
+
+PLAIN_LINE_EVERY_S = 10.0
+
+json_option = click.option("--json", "as_json", is_flag=True, help="One JSON object on standard output, nothing else.")
+
+
+galaxy_option = click.option(
+    "--galaxy", metavar="NAME|PATH", help="A published Galaxy (see: starcount laws), or your own TOML file."
+)
+
+
+def run_option(verb: str):
+    """The option that names a run."""
+    return click.option("--run", metavar="NAME", help=f"Folder under outputs/.  [default: SURVEY-{verb}]")
+
+
+def assignments(pairs: Iterable[str]) -> dict[str, str]:
+    """``key=column`` options as a dict."""
+    found = {}
+    for pair in pairs:
+        key, sign, name = pair.partition("=")
+        if not (key and sign and name):
+            raise click.UsageError(f"--column {pair!r}; expected KEY=COLUMN, e.g. ra=RAJ2000")
+        found[key.strip()] = name.strip()
+    return found
+
+
+def say(text: str = "") -> None:
+    """A line for the person, not for the pipe."""
+    click.echo(text, err=True)
+
+
+def show(record: dict, lines: Iterable[str], as_json: bool) -> None:
+    """Print a result once: as one JSON object, or as lines."""
+    if as_json:
+        click.echo(json.dumps(record, allow_nan=False))
+    else:
+        for line in lines:
+            click.echo(line)
+
+
+def failure(message: str, status: int, as_json: bool, before: str = "") -> int:
+    """Report why there is no result, as lines and, where JSON was asked for, as one object; return the status."""
+    if before:
+        say(before)
+    lines = message.splitlines()
+    for line in lines:
+        say(f"starcount: {line}")
+    if as_json:
+        click.echo(json.dumps({"exit_status": status, "problems": lines}))
+    return status
+
+
+def columns(rows: Sequence[Sequence[str]]) -> list[str]:
+    """Rows of text as aligned lines."""
+    widths = [max(map(len, column)) for column in zip(*rows, strict=True)]
+    return ["  ".join(cell.ljust(w) for cell, w in zip(row, widths, strict=True)).rstrip() for row in rows]
+
+
+@contextmanager
+def progress() -> Iterator[Progress]:
+    """A function to tell progress to: a bar with an estimate on a terminal, plain lines otherwise."""
+    if sys.stderr.isatty():
+        with _bar() as tell:
+            yield tell
+    else:
+        yield _plain(time.monotonic)
+
+
+@contextmanager
+def _bar() -> Iterator[Progress]:
+    from rich.console import Console
+    from rich.progress import Progress as Bars
+    from rich.progress import TimeElapsedColumn, TimeRemainingColumn
+
+    tasks: dict = {}
+    looks = (*Bars.get_default_columns()[:-1], TimeElapsedColumn(), TimeRemainingColumn())
+    bars = Bars(*looks, console=Console(stderr=True))
+
+    def tell(what: str, share: float) -> None:
+        if what not in tasks:
+            tasks[what] = (bars.add_task(what, total=1.0, visible=False), time.monotonic())
+        task, start = tasks[what]
+        bars.update(task, completed=share, visible=time.monotonic() - start > QUIET_S)
+
+    with bars:
+        yield tell
+
+
+def _plain(clock: Callable[[], float]) -> Progress:
+    """Lines such as ``sampling: 30 %, about 35 s left``, at most one every ten seconds."""
+    start: dict[str, float] = {}
+    last: dict[str, float] = {}
+
+    def tell(what: str, share: float) -> None:
+        now = clock()
+        begun = start.setdefault(what, now)
+        due = last.get(what, begun + QUIET_S - PLAIN_LINE_EVERY_S) + PLAIN_LINE_EVERY_S
+        if now < due or not 0.0 < share < 1.0:
+            return
+        last[what] = now
+        say(f"{what}: {100 * share:.0f} %, about {(now - begun) * (1 - share) / share:.0f} s left")
+
+    return tell
+
+
+def run_lines(record: dict) -> list[str]:
+    """What a run found, in lines: counts by group, parameters of a fit, the bins that fit worst, where things are."""
+    result = record["result"]
+    lines = [*_group_lines(result["groups"])]
+    if "verdict" in result:
+        lines += ["", *_parameter_lines(result["parameters"]), "", result["verdict"]]
+        lines += [f"caution: {warning}" for warning in result["warnings"]]
+    if result["worst_bins"]:
+        lines += ["", "least probable bins:", *_bin_lines(result["worst_bins"])]
+    lines += ["", f"written: {record['folder']}"]
+    return [*lines, f"page: {record['page']}" if "page" in record else f"next: starcount report {record['run']}"]
+
+
+def _group_lines(groups: dict) -> list[str]:
+    rows = [["group", "expected in all", "counted", "expected there", "counted / expected"]]
+    for name, group in groups.items():
+        n, there = group["counted"], group["expected_of_counted"]
+        compared = ["-", "-", "-"] if n is None else [str(n), f"{there:.1f}", f"{n / there:.3f}" if there else "-"]
+        rows.append([name, f"{group['expected']:.1f}", *compared])
+    return columns(rows)
+
+
+def _parameter_lines(parameters: list[dict]) -> list[str]:
+    rows = [["parameter", "median", "68 % interval (equal-tailed)", "unit", "r-hat", "ESS bulk", "prior width left"]]
+    for p in parameters:
+        interval = f"{p['q16']:.4g} to {p['q84']:.4g}"
+        left = "-" if p["prior_width_left"] is None else f"{100 * p['prior_width_left']:.0f} %"
+        chains = [f"{p['r_hat']:.3f}", f"{p['ess_bulk']:.0f}"]
+        rows.append([p["name"], f"{p['q50']:.4g}", interval, p["unit"], *chains, left])
+    return columns(rows)
+
+
+def _bin_lines(bins: list[dict]) -> list[str]:
+    rows = [["group", "field", "from", "to [mag]", "counted", "expected", "pull", "probability"]]
+    for b in bins:
+        numbers = [f"{b['expected']:.1f}", f"{b['pull']:+.1f}", f"{b['tail']:.2g}"]
+        rows.append([b["group"], b["field"], f"{b['m_lo']:g}", f"{b['m_hi']:g}", str(b["n"]), *numbers])
+    return columns(rows)

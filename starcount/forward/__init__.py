@@ -1,0 +1,7 @@
+"""From a survey and a Galaxy to expected counts."""
+
+from starcount.forward.group import GroupModel
+from starcount.forward.luminosity import census_density_pc3, layer_functions, sphere_means
+from starcount.forward.model import ForwardModel
+
+__all__ = ["ForwardModel", "GroupModel", "census_density_pc3", "layer_functions", "sphere_means"]

@@ -1,0 +1,142 @@
+"""The pull-back of the projection: gradients by every number from a cotangent of the counts.
+
+The projection is linear in density, so its transpose brings the cotangent back to the nodes; there it meets the
+logarithmic derivatives of the laws. One pass, whatever the number of parameters.
+"""
+
+import numpy as np
+
+from starcount.compilation import kernel
+from starcount.forward.kernels.call import call_law
+from starcount.forward.kernels.density import layer_numbers, line_stars
+from starcount.forward.kernels.grid import gather
+from starcount.forward.kernels.project import BLOCK, fill_grid, work_space
+from starcount.vector_math import exp
+
+
+@kernel
+def height_slopes(R0, z0, at, out):
+    """Derivatives (3, node) of R, phi and z by the Sun's height z0."""
+    R, cos_phi, sin_phi, z = at[0], at[1], at[2], at[3]
+    per = 1.0 / (R0 * np.sqrt(1.0 - (z0 / R0) ** 2))
+    by_R, by_phi, by_z = out[0], out[1], out[2]
+    for j in range(z.size):
+        dx = z[j] * per
+        by_R[j] = -cos_phi[j] * dx
+        by_phi[j] = sin_phi[j] * dx / max(R[j], 1e-12)
+        by_z[j] = cos_phi[j] * R[j] * per
+
+
+@kernel
+def dot(a, b):
+    """The sum of the products of two vectors."""
+    total = 0.0
+    for j in range(a.size):
+        total += a[j] * b[j]
+    return total
+
+
+@kernel
+def reverse_line(s, v, theta, arrays, at, stars, value, moved, slopes, g_theta, g_scale):
+    """Add a sight line's part to the gradients by the layers' numbers; return that by the Sun's height."""
+    n_parameter, slopes_at, n = arrays[2], arrays[6], at.shape[1]
+    height_slopes(arrays[8][0], v[-1], at, moved)
+    by_height = 0.0
+    q = moved[3]
+    for k in range(stars.shape[0]):
+        P = n_parameter[k]
+        density, got = stars[k], value[k]
+        for j in range(n):
+            q[j] = density[j] * got[j]
+            g_scale[k] += q[j]
+        rows = slopes[: (P + 3) * n]
+        call_law(slopes_at[k], n, theta[k], at[0], at[1], at[2], at[3], rows)
+        for p in range(P):
+            g_theta[k, p] += dot(q, rows[p * n : (p + 1) * n])
+        for i in range(3):
+            row, shift = rows[(P + i) * n : (P + i + 1) * n], moved[i]
+            for j in range(n):
+                by_height += q[j] * row[j] * shift[j]
+    return by_height
+
+
+@kernel
+def reverse_field(f, v, theta, ln_scale, factor, arrays, space, cotangent, g_theta, g_scale):
+    """Bring the cotangent (y, layer) of a field back; return its gradients by the Sun's height and by ln dust."""
+    first_line, first_node = arrays[10], arrays[11]
+    mu, A, node_weight, class_first, grid_start = arrays[14], arrays[15], arrays[16], arrays[17], arrays[18]
+    at, stars, value, by_factor, moved, slopes = space
+    by_height, by_dust = 0.0, 0.0
+    for s in range(first_line[f], first_line[f + 1]):
+        a, b = first_node[s], first_node[s + 1]
+        n = b - a
+        here, found = line_stars(s, v, theta, ln_scale, arrays, at, stars)
+        got, bent = value[:, :n], by_factor[:, :n]
+        got[:] = 0.0
+        bent[:] = 0.0
+        for c in range(class_first.size - 1):
+            first, last = class_first[c], class_first[c + 1]
+            for e in range(node_weight.size):
+                gather(cotangent, mu[a:b], A[c, e, a:b], factor, node_weight[e], grid_start, first, last, got, bent)
+        by_height += reverse_line(s, v, theta, arrays, here, found, got, moved[:, :n], slopes, g_theta, g_scale)
+        for k in range(found.shape[0]):
+            by_dust += dot(found[k], bent[k])
+    return by_height, factor * by_dust
+
+
+@kernel
+def collect(v, theta, g_theta, g_scale, by_height, arrays):
+    """Return the gradient by the vector from those by the layers' numbers, through their anchors."""
+    index, scale, n_parameter, amplitude, anchor, _, slopes_at, total_at, R0 = arrays[:9]
+    gv, z0 = np.zeros(v.size), v[-1]
+    R_sun = np.sqrt(R0[0] * R0[0] - z0 * z0)
+    R, one, zero, z = np.array([R_sun]), np.ones(1), np.zeros(1), np.array([z0])
+    out = np.empty(index.shape[1] + 3)
+    for k in range(index.shape[0]):
+        P = n_parameter[k]
+        gv[amplitude[k]] += g_scale[k]
+        if anchor[k] == 0:
+            call_law(slopes_at[k], 1, theta[k], R, one, zero, z, out)
+            by_height -= g_scale[k] * (out[P + 2] - out[P] * z0 / R_sun)
+            by_anchor = out[:P]
+        else:
+            call_law(total_at[k], 1, theta[k], R, one, zero, z, out)
+            by_anchor = out[1 : P + 1]
+        for p in range(P):
+            if index[k, p] >= 0:
+                gv[index[k, p]] += scale[k, p] * (g_theta[k, p] - g_scale[k] * by_anchor[p])
+    gv[-1] += by_height
+    return gv
+
+
+@kernel
+def project_back(v, W, ln_dust, cotangent, want_W, *arrays):
+    """Return the gradients by ``v``, ``W`` and ``ln_dust`` of sum(cotangent * project(...)).
+
+    ``cotangent`` (field, bin). The gradient by ``W`` costs one more matrix product; unless ``want_W`` it is zero.
+    """
+    n_field, n_y, n_layer = arrays[10].size - 1, int(arrays[18][2]), arrays[0].shape[0]
+    theta, ln_scale = layer_numbers(v, arrays)
+    at, stars = work_space(arrays)
+    longest = at.shape[1]
+    space = (at, stars, np.empty((n_layer, longest)), np.empty((n_layer, longest)), np.empty((4, longest)),
+             np.empty((arrays[0].shape[1] + 3) * longest))  # fmt: skip
+    g_theta, g_scale, g_W, g_dust = np.zeros(theta.shape), np.zeros(n_layer), np.zeros(W.shape), np.zeros(n_field)
+    grid, back = np.empty((BLOCK, n_y, n_layer)), np.empty((BLOCK, n_y, n_layer))
+    W_transposed, by_height = np.ascontiguousarray(W.T), 0.0
+    for start in range(0, n_field, BLOCK):
+        size = min(BLOCK, n_field - start)
+        wanted = cotangent[start : start + size]
+        np.dot(wanted, W_transposed, back[:size].reshape(size, n_y * n_layer))
+        for i in range(size):
+            f = start + i
+            factor = exp(ln_dust[f])
+            if want_W:
+                fill_grid(f, v, theta, ln_scale, factor, arrays, at, stars, grid[i])
+            height, g_dust[f] = reverse_field(
+                f, v, theta, ln_scale, factor, arrays, space, back[i], g_theta, g_scale
+            )
+            by_height += height
+        if want_W:
+            g_W += np.dot(grid[:size].reshape(size, n_y * n_layer).T, wanted)
+    return collect(v, theta, g_theta, g_scale, by_height, arrays), g_W, g_dust

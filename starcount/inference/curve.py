@@ -1,0 +1,72 @@
+"""Smooth corrections of the luminosity functions, fitted along with the Galaxy.
+
+Counts constrain only density times luminosity function. Without this freedom a 20 % error of a tabulated function
+moves a fitted height by several times the error that the counts alone would claim. One curve corrects the thin disc's
+layers, another all old populations: ``lf = lf0 * exp(hat(M) @ c)``.
+
+The curve is linear between knots every 2 mag and flat outside them, so a coefficient is the logarithm of the correction
+at its knot. Its prior: second differences scatter by ``BEND``, the mean level by ``LEVEL``, each knot by ``WIDTH``. The
+curve averages to zero over the reference window, where the amplitude alone sets the number of stars.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+import pymc as pm
+import pytensor.tensor as pt
+from scipy import linalg
+
+from starcount.constants import REFERENCE_WINDOW_MV_MAG
+
+KNOTS_MAG = np.arange(-2.0, 16.1, 2.0)
+BEND = 0.10
+LEVEL = 0.05
+WIDTH = 0.30
+GROUPS = {"disc": ("thin",), "old": ("thick", "halo")}
+"""The curves and the components whose layers they correct; others keep their tables."""
+
+DIMENSION = "knot_mag"
+
+
+@dataclass(frozen=True, eq=False)
+class Curve:
+    """A curve's name, the components it corrects, and its coefficients from standard normals: ``c = spread @ u``.
+
+    ``spread`` is (knot, knot - 1): one direction is spent on the zero mean over the reference window.
+    """
+
+    name: str
+    components: tuple[str, ...]
+    spread: np.ndarray
+
+    def variable(self):
+        """Add the curve to the open PyMC model: ``u.curve.NAME`` ~ N(0, 1), ``curve.NAME`` (knot); return the latter."""
+        u = pm.Normal(f"u.curve.{self.name}", 0.0, 1.0, shape=self.spread.shape[1])
+        return pm.Deterministic(f"curve.{self.name}", pt.dot(self.spread, u), dims=DIMENSION)
+
+
+def hat(M_mag: np.ndarray) -> np.ndarray:
+    """Return the weight of each knot at absolute magnitudes: (cell, knot); rows sum to 1."""
+    return np.stack([np.interp(M_mag, KNOTS_MAG, row) for row in np.eye(KNOTS_MAG.size)], axis=1)
+
+
+def curves(components: tuple[str, ...], M_edges_mag: np.ndarray) -> tuple[Curve, ...]:
+    """Return the curves that correct any of these components; ``M_edges_mag`` are the cells' edges (cell + 1,)."""
+    spread = _spread(0.5 * (M_edges_mag[1:] + M_edges_mag[:-1]))
+    found = ((name, tuple(c for c in members if c in components)) for name, members in GROUPS.items())
+    return tuple(Curve(name, members, spread) for name, members in found if members)
+
+
+def _spread(M_mag: np.ndarray) -> np.ndarray:
+    n = KNOTS_MAG.size
+    bend = np.diff(np.eye(n), 2, axis=0)
+    precision = bend.T @ bend / BEND**2 + np.eye(n) / WIDTH**2 + np.ones((n, n)) / (n * LEVEL) ** 2
+    inside = (M_mag > REFERENCE_WINDOW_MV_MAG[0]) & (M_mag < REFERENCE_WINDOW_MV_MAG[1])
+    free = linalg.null_space(hat(M_mag[inside]).mean(axis=0, keepdims=True))
+    return free @ linalg.cholesky(linalg.inv(free.T @ precision @ free), lower=True)
+
+
+def owners(curves: tuple[Curve, ...], components: tuple[str, ...]) -> np.ndarray:
+    """Return which curve corrects each layer: 0 for none, else 1 + its index; ``components`` are the layers' own."""
+    number = {c: i + 1 for i, curve in enumerate(curves) for c in curve.components}
+    return np.array([number.get(c, 0) for c in components])

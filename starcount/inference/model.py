@@ -1,0 +1,166 @@
+"""The posterior, defined once: a PyMC model of a survey's counts and of the local census."""
+
+from collections.abc import Sequence
+from dataclasses import replace
+
+import numpy as np
+import pymc as pm
+import pytensor
+import pytensor.tensor as pt
+
+from starcount.errors import InputError, UnknownName
+from starcount.galaxy.component import Parameter
+from starcount.inference import curve, likelihoods, priors
+from starcount.inference.op import ExpectedCounts, Kernels, Luminosity
+from starcount.stars import M_EDGES_MAG
+from starcount.survey import overlapping_fields
+
+CENSUS = "census"
+"""The group of the local census; its rows scatter by Poisson noise."""
+
+
+def build_model(
+    forward_model,
+    parameters: Sequence[str] | None = None,
+    *,
+    likelihood: str = "negative-binomial",
+    lf_curve: bool = True,
+    census: bool = True,
+    kernels: Kernels | None = None,
+) -> pm.Model:
+    """Return the PyMC model of ``parameters`` (all that can be fitted, by default) given the survey's counts.
+
+    Each parameter is a standard normal ``u.NAME`` and, in its own unit, ``NAME``. Each group has one observed variable
+    ``counts.GROUP`` over its used bins, in the order of ``flatnonzero(used)``. Geometry and counts are data of the
+    model. ``kernels`` stands in for the compiled functions of the forward model.
+    """
+    if kernels is None:
+        from starcount.forward import kernels
+    scatter = likelihoods.find(likelihood)
+    chosen = choose(forward_model.galaxy, parameters)
+    groups = fitted_groups(forward_model, census)
+    _check(forward_model, chosen, groups)
+    components = tuple(component.name for component, _ in forward_model.galaxy.layers)
+    with pm.Model(coords={curve.DIMENSION: curve.KNOTS_MAG}) as model:
+        values = {p.name: priors.variable(p) for p in chosen}
+        v = forward_model.galaxy.vector(values, xp=pt)
+        shape = _lf_factor(components) if lf_curve else None
+        for name, group in groups.items():
+            law = likelihoods.find("poisson") if name == CENSUS else scatter
+            floor = priors.variable(floor_of(name)) if law.HAS_FLOOR else None
+            _observe(name, group, law, floor, _expected(name, group, v, shape, kernels))
+    return model
+
+
+def choose(galaxy, parameters: Sequence[str] | None) -> tuple[Parameter, ...]:
+    """Return the parameters of these names, or all that can be fitted; refuse unknown names and missing priors."""
+    if parameters is None:
+        return tuple(p for p in galaxy.parameters.values() if p.fittable and p.error > 0)
+    for name in parameters:
+        if name not in galaxy.parameters:
+            raise UnknownName("parameter", name, tuple(galaxy.parameters))
+    if len(set(parameters)) < len(parameters) or not parameters:
+        raise InputError(f"parameters to fit: {list(parameters)}; expected at least one name, each once")
+    chosen = tuple(galaxy.parameters[name] for name in parameters)
+    for parameter in chosen:
+        priors.check_prior(parameter)
+    return chosen
+
+
+def floor_of(group: str) -> Parameter:
+    """The fractional error floor of a group's counts, beyond Poisson noise, and its prior."""
+    return Parameter(
+        name=f"floor.{group}",
+        value=0.05,
+        error=0.04,
+        unit="",
+        lower=1e-3,
+        upper=1.0,
+        prior="lognormal",
+        reference="assumed: smooth models leave 2 to 11 % in a bin",
+        meaning=f"scatter of the counts of group {group} beyond Poisson noise",
+    )
+
+
+def fitted_parameters(galaxy, parameters, groups: Sequence[str], likelihood: str) -> tuple[Parameter, ...]:
+    """Return everything that has a prior table row: the chosen parameters, and a floor for each group that has one."""
+    floors = [floor_of(name) for name in groups] if likelihoods.find(likelihood).HAS_FLOOR else []
+    return (*choose(galaxy, parameters), *floors)
+
+
+def fitted_groups(forward_model, census: bool) -> dict:
+    """Return the group models whose counts are fitted, by name.
+
+    Bins in which nothing was counted and the model can hold no star say nothing; they are set aside.
+    """
+    groups = {g.name: g for g in forward_model.groups}
+    if census and CENSUS in groups:
+        raise InputError(f"group name {CENSUS!r} is taken by the local census; expected another name")
+    if census and forward_model.census is None:
+        raise InputError(f"no component of Galaxy {forward_model.galaxy.name!r} is made of the census; fit without it")
+    if census:
+        groups[CENSUS] = forward_model.census
+    return {name: _with_stars(group) for name, group in groups.items()}
+
+
+def _with_stars(group):
+    if group.counts is None or not group.used.any():
+        raise InputError(f"group {group.name!r} holds no counts to fit; give it a counts table or leave it out")
+    none = group.used & (group.expected({}) <= 0.0)
+    impossible = np.argwhere(none & (group.counts > 0))
+    if len(impossible):
+        field, one = impossible[0]
+        raise InputError(
+            f"group {group.name!r}: {group.counts[field, one]} stars in field {field}, bin {one}, where the model expects "
+            f"none (and {len(impossible) - 1} more such bins); leave these bins out of the counts"
+        )
+    return replace(group, used=group.used & ~none)
+
+
+def _check(forward_model, chosen, groups) -> None:
+    data = sum(int(group.used.sum()) for group in groups.values())
+    if data < len(chosen):
+        raise InputError(f"{data} counts cannot fix {len(chosen)} parameters; expected at least as many counts")
+    overlapping = overlapping_fields(forward_model.survey)
+    if overlapping:
+        first = " and ".join(f"{group}/{field}" for group, field in overlapping[0])
+        raise InputError(f"fields overlap in the same bins: {first} (and {len(overlapping) - 1} more pairs)")
+
+
+def _lf_factor(components: tuple[str, ...]):
+    """The correction of the luminosity functions (layer, cell) by the smooth curves, and 1 where there is none."""
+    middle = 0.5 * (M_EDGES_MAG[1:] + M_EDGES_MAG[:-1])
+    found = curve.curves(components, M_EDGES_MAG)
+    weights = _data("curve.weights", curve.hat(middle))
+    rows = [pt.zeros(middle.size), *(pt.dot(weights, c.variable()) for c in found)]
+    return pt.exp(pt.stack(rows))[curve.owners(found, components)]
+
+
+def _data(name: str, array: np.ndarray):
+    """Add an array to the model's data as it is: ``pm.Data`` would cut whole numbers to 32 bits, and with them the
+    addresses of the laws."""
+    variable = pytensor.shared(np.ascontiguousarray(array), name=name)
+    pm.modelcontext(None).register_data_var(variable)
+    return variable
+
+
+def _expected(name: str, group, v, shape, kernels: Kernels):
+    geometry = [_data(f"{name}.geometry{i}", a) for i, a in enumerate(group.projection.arrays)]
+    if shape is None:
+        W = _data(f"{name}.luminosity", group.luminosity_matrix(group.lf))
+    else:
+        lf = _data(f"{name}.lf", group.lf) * shape[:, None, :]
+        W = Luminosity(kernels)(lf, *(_data(f"{name}.lf{i}", a) for i, a in enumerate(group.lf_arrays)))
+    ln_dust = _data(f"{name}.ln_dust", np.zeros(group.counts.shape[0]))
+    expected = ExpectedCounts(kernels, fixed_luminosity=shape is None)(v, W, ln_dust, *geometry)
+    if len(group.extra):
+        expected = expected + _data(f"{name}.extra", np.sum(group.extra, axis=0))
+    return expected
+
+
+def _observe(name: str, group, likelihood, floor, expected) -> None:
+    cells = np.flatnonzero(group.used)
+    dim = f"cell.{name}"
+    pm.modelcontext(None).add_coord(dim, cells)
+    counts = pm.Data(f"{name}.counts", group.counts.ravel()[cells], dims=dim)
+    likelihood.observe(f"counts.{name}", expected.ravel()[_data(f"{name}.used", cells)], floor, counts, dim)

@@ -1,0 +1,128 @@
+"""A PyMC model as plain functions of one vector: what the mode, the map and the draws are made of.
+
+Works for any PyMC model whose counts have one of our likelihoods. Everything else in it (priors, potentials, further
+observed variables) enters through its logarithm and the derivatives of that.
+"""
+
+from dataclasses import dataclass
+from types import ModuleType
+
+import numpy as np
+import pymc as pm
+import pytensor
+import pytensor.tensor as pt
+from scipy import linalg
+
+from starcount.errors import InputError
+from starcount.inference import compat, likelihoods
+
+STEP = 1e-4
+"""Half the step of the central differences, in standard deviations of the prior: errors are about 1e-8."""
+
+_FLATTEST = 1e-6
+"""The least curvature a prior is given, so that a flat or double-peaked one still leaves a finite step."""
+
+
+@dataclass(frozen=True)
+class Counts:
+    """The name of an observed variable and its likelihood."""
+
+    name: str
+    likelihood: ModuleType
+
+
+class Target:
+    """The posterior of a PyMC model in its unconstrained variables, joined in one vector ``x`` (p,)."""
+
+    def __init__(self, model: pm.Model):
+        self.model = model
+        point = model.initial_point()
+        self.shapes = tuple(np.shape(point[v.name]) for v in model.value_vars)
+        self.x0 = np.concatenate([np.ravel(point[v.name]) for v in model.value_vars]).astype(float)
+        found = [(rv, likelihoods.recognise(rv)) for rv in model.observed_RVs]
+        ours = [(rv, terms) for rv, terms in found if terms is not None]
+        if not ours:
+            raise InputError("the PyMC model holds no counts with one of the likelihoods of this package")
+        self.counts = tuple(Counts(rv.name, terms[0]) for rv, terms in ours)
+        self.observed = tuple(np.asarray(model.rvs_to_values[rv].eval(), float) for rv, _ in ours)
+        self._compile(point, ours, [rv for rv, terms in found if terms is None])
+
+    def _compile(self, point, ours, others) -> None:
+        model = self.model
+        means = [mean for _, (_, mean, _) in ours]
+        spreads = [pt.as_tensor_variable(0.0 if d is None else d) for _, (_, _, d) in ours]
+        named = [v for v in model.unobserved_RVs if v.name in model.named_vars]
+        self.names = tuple(v.name for v in named)
+        rest = model.logp(vars=[*model.free_RVs, *model.potentials, *others])
+        pulls = [mean.type() for mean in means] + [pt.dscalar() for _ in spreads]
+        expected = model.replace_rvs_by_values([*means, *spreads])
+        pulled = sum((pt.sum(pull * one) for pull, one in zip(pulls, expected, strict=True)), pt.constant(0.0))
+        self._means = self._function(point, expected)
+        self._pull_back = self._function(point, [pulled], pulls, gradient=True)
+        self._rest = self._function(point, [rest], gradient=True)
+        self._named = self._function(point, model.replace_rvs_by_values(named))
+
+    def _function(self, point, outputs, more_inputs=(), gradient=False):
+        outputs, x = pm.pytensorf.join_nonshared_inputs(point, outputs, self.model.value_vars)
+        if gradient:
+            outputs = [*outputs, pytensor.grad(outputs[0], x)]
+        return pytensor.function([x, *more_inputs], outputs, mode=compat.MODE, on_unused_input="ignore")
+
+    @property
+    def size(self) -> int:
+        """How many numbers are fitted."""
+        return self.x0.size
+
+    def log_posterior(self, x: np.ndarray) -> tuple[float, np.ndarray]:
+        """Return ln of the posterior, up to a constant, and its gradient (p,)."""
+        value, gradient = self._rest(x)
+        means, spreads = self.means(x)
+        terms = [_terms(*one) for one in zip(self.counts, self.observed, means, spreads, strict=True)]
+        by_spread = [one[3] / spread if spread > 0 else 0.0 for one, spread in zip(terms, spreads, strict=True)]
+        _, pulled = self._pull_back(x, *(one[1] for one in terms), *by_spread)
+        return float(value) + sum(one[0] for one in terms), gradient + pulled
+
+    def means(self, x: np.ndarray) -> tuple[list[np.ndarray], list[float]]:
+        """Return the expected counts of each observed variable, used bins in a row, and its dispersion."""
+        found, n = self._means(x), len(self.counts)
+        return found[:n], [float(np.ravel(d)[0]) for d in found[n:]]
+
+    def named(self, x: np.ndarray) -> dict[str, np.ndarray]:
+        """Return every named variable of the model in its own units."""
+        return dict(zip(self.names, self._named(x), strict=True))
+
+    def jacobian(self, x: np.ndarray) -> np.ndarray:
+        """Return J (row, p): its J^T J is the expected information of the counts plus the curvature of the rest."""
+        rows = [*self._count_rows(x), self._rest_root(x)]
+        return np.concatenate(rows)
+
+    def _count_rows(self, x: np.ndarray):
+        means, spreads = self.means(x)
+        steps = [self._difference(x, i) for i in range(x.size)]
+        for c, (counts, n) in enumerate(zip(self.counts, self.observed, strict=True)):
+            slopes = np.stack([mean[c] for mean, _ in steps], axis=1)
+            _, _, information, _, on_spread = _terms(counts, n, means[c], spreads[c])
+            yield np.sqrt(information)[:, None] * slopes
+            if spreads[c] > 0:
+                slope = np.array([spread[c] for _, spread in steps]) / spreads[c]
+                yield np.sqrt(on_spread.sum()) * slope[None, :]
+
+    def _difference(self, x: np.ndarray, i: int) -> tuple[list[np.ndarray], list[float]]:
+        step = np.zeros(x.size)
+        step[i] = STEP
+        (high, high_spread), (low, low_spread) = self.means(x + step), self.means(x - step)
+        means = [(a - b) / (2 * STEP) for a, b in zip(high, low, strict=True)]
+        return means, [(a - b) / (2 * STEP) for a, b in zip(high_spread, low_spread, strict=True)]
+
+    def _rest_root(self, x: np.ndarray) -> np.ndarray:
+        """The symmetric square root of the curvature of everything but the counts: (p, p)."""
+        steps = STEP * np.eye(x.size)
+        hessian = np.array([self._rest(x - h)[1] - self._rest(x + h)[1] for h in steps]) / (2 * STEP)
+        values, vectors = linalg.eigh(0.5 * (hessian + hessian.T))
+        return (vectors * np.sqrt(np.maximum(values, _FLATTEST))) @ vectors.T
+
+
+def _terms(counts: Counts, n: np.ndarray, mean: np.ndarray, dispersion: float):
+    """The compiled terms of one observed variable, all of whose bins are used."""
+    found = counts.likelihood.terms(n[None, :], np.ones((1, n.size), bool), mean[None, :], dispersion)
+    return [one[0] for one in found]

@@ -1,0 +1,169 @@
+"""What one does with starcount: the functions behind the commands, with the same names and defaults.
+
+Each returns a ``Run`` or, where nothing is written, a dict fit for JSON. Libraries that take seconds to import are
+imported by the steps that need them: predicting does without PyMC, checking without the compiled kernels.
+"""
+
+from collections.abc import Callable, Mapping, Sequence
+from pathlib import Path
+
+from starcount.errors import FailedChecks
+from starcount.galaxy import LAWS, published_names, read_galaxy
+from starcount.steps import folder, record
+from starcount.steps.record import Run
+from starcount.survey import read_survey, write_survey
+
+__all__ = ["Run", "check", "count", "demo", "fit", "laws", "predict", "report"]
+
+Progress = Callable[[str, float], None]
+DEMO_SURVEY = Path("fields") / "demo"
+DEMO_RUN = "demo"
+
+
+def silent(what: str, share: float) -> None:
+    """Progress that nobody watches."""
+
+
+def check(survey: str | Path) -> dict:
+    """Read a survey with full checking; return what it holds. Raises ``Problems`` with everything that is wrong."""
+    return record.of_survey(read_survey(survey))
+
+
+def count(
+    survey: str | Path,
+    catalogues: Sequence[str | Path],
+    *,
+    columns: Mapping[str, str] | None = None,
+    cuts: Sequence[str] = (),
+    group: str | None = None,
+    out: str | Path | None = None,
+    progress: Progress = silent,
+) -> Run:
+    """Count star catalogues into a survey; write the survey with its counts to ``out`` (default outputs/SURVEY-counts).
+
+    ``columns``, ``cuts`` and ``group`` as in ``starcount.catalogue.count_catalogue``. Groups that are not counted into
+    keep the counts they have.
+    """
+    from starcount.catalogue import count_catalogue
+
+    empty = read_survey(survey)
+    final = folder.run_path(f"{record.short_name(survey)}-counts") if out is None else folder.ours(Path(out))
+    found = count_catalogue(
+        catalogues,
+        empty,
+        columns=columns,
+        cuts=cuts,
+        group=group,
+        progress=lambda done, total: progress("counting", done / total),
+    )
+    counted = record.with_counts(empty, found.counts)
+    result = {"rows": found.rows, "counted": found.counted, "dropped": found.dropped, "columns": found.columns}
+    options = {"columns": dict(columns or {}), "cuts": list(cuts), "group": group}
+    with folder.replaced(final) as part:
+        write_survey(counted, part)
+        inputs = [record.survey_folder(survey), *catalogues]
+        return Run(final, record.write(part, final, "count", options, inputs, result))
+
+
+def predict(
+    survey: str | Path, *, galaxy: str | Path | None = None, run: str | None = None, progress: Progress = silent
+) -> Run:
+    """Predict a survey's counts from a Galaxy's own values; write the tables to outputs/RUN."""
+    return _predict(survey, galaxy or "default", {}, run or f"{record.short_name(survey)}-prediction")
+
+
+def _predict(survey, galaxy, values: Mapping[str, float], run: str) -> Run:
+    from starcount.forward import ForwardModel
+    from starcount.predict import predict_counts
+    from starcount.report import write_tables
+
+    final = folder.run_path(run)
+    model = ForwardModel(read_survey(survey), read_galaxy(galaxy))
+    prediction = predict_counts(model, values=values)
+    options = {"galaxy": str(galaxy), "values": dict(values)}
+    with folder.replaced(final) as part:
+        inputs = record.keep_inputs(part, model.survey, survey, galaxy)
+        written = record.write(part, final, "predict", options, inputs, record.of_prediction(prediction))
+        write_tables(prediction, part, record.meta(written))
+    return Run(final, written, prediction)
+
+
+def fit(
+    survey: str | Path,
+    *,
+    galaxy: str | Path | None = None,
+    free: Sequence[str] | None = None,
+    likelihood: str = "negative-binomial",
+    curve: bool = True,
+    census: bool = True,
+    seed: int = 1,
+    draws: int = 1000,
+    chains: int = 4,
+    accept_failed: bool = False,
+    run: str | None = None,
+    progress: Progress = silent,
+) -> Run:
+    """Fit a Galaxy to a survey's counts; write draws and tables to outputs/RUN.
+
+    A fit that fails its checks is written too; then ``FailedChecks`` is raised, unless ``accept_failed``.
+    """
+    from starcount.forward import ForwardModel
+    from starcount.inference import fit_galaxy
+    from starcount.predict import predict_counts
+    from starcount.report import page_content, write_table, write_tables
+
+    galaxy = galaxy or "default"
+    final = folder.run_path(run or f"{record.short_name(survey)}-fit")
+    model = ForwardModel(read_survey(survey), read_galaxy(galaxy))
+    settings = {"likelihood": likelihood, "draws": draws, "chains": chains, "seed": seed}
+    posterior = fit_galaxy(model, free, lf_curve=curve, census=census, progress=progress, **settings)
+    prediction = predict_counts(model, posterior=posterior, seed=seed)
+    options = {"galaxy": str(galaxy), "free": list(posterior.names), "curve": curve, "census": census, **settings}
+    with folder.replaced(final) as part:
+        inputs = record.keep_inputs(part, model.survey, survey, galaxy)
+        result = {**record.of_prediction(prediction), **record.of_posterior(posterior)}
+        written = record.write(part, final, "fit", options, inputs, result)
+        posterior.save(part / record.POSTERIOR)
+        meta = record.meta(written)
+        write_tables(prediction, part, meta)
+        write_table(page_content("", prediction, {}, posterior).parameter_table, part / "parameters", meta)
+    done = Run(final, written, prediction, posterior)
+    if not posterior.certified and not accept_failed:
+        raise FailedChecks(f"{final}: FAILED CHECKS\n{posterior.verdict}")
+    return done
+
+
+def report(run: str | Path, *, progress: Progress = silent) -> Run:
+    """Draw the figures of a run and its page, into the run's own folder."""
+    from starcount.steps import page
+
+    return page.draw(folder.folder_of(run), progress)
+
+
+def laws() -> dict:
+    """The density laws and the published Galaxies, with parameters, units and sources."""
+    return {
+        "laws": [record.of_law(name) for name in LAWS],
+        "galaxies": [record.of_galaxy(name, read_galaxy(name)) for name in published_names()],
+    }
+
+
+def demo(*, quick: bool = False, progress: Progress = silent) -> Run:
+    """Write the demo's survey to fields/demo unless it is there, fit it and report it as outputs/demo.
+
+    ``quick`` predicts from the truth instead of fitting.
+    """
+    from starcount.demo import read_truth, write_demo
+
+    if not DEMO_SURVEY.exists():
+        write_demo(DEMO_SURVEY)
+    truth = read_truth(DEMO_SURVEY)
+    if quick:
+        _predict(DEMO_SURVEY, truth.galaxy, truth.values, DEMO_RUN)
+    else:
+        free = list(truth.values)
+        fit(DEMO_SURVEY, galaxy=truth.galaxy, free=free, run=DEMO_RUN, accept_failed=True, progress=progress)
+    done = report(DEMO_RUN, progress=progress)
+    if done.posterior is not None and not done.posterior.certified:
+        raise FailedChecks(f"{done.folder}: FAILED CHECKS\n{done.posterior.verdict}")
+    return done

@@ -1,0 +1,118 @@
+"""The steps on small surveys: what they write, what they say, what they refuse."""
+
+import json
+from pathlib import Path
+
+import numpy as np
+import pytest
+from astropy.table import QTable
+
+from starcount import steps
+from starcount.cli import main
+from starcount.errors import InputError, UnknownName
+from starcount.survey import read_survey
+
+DEMO = Path(__file__).parents[1] / "fields" / "demo"
+
+
+@pytest.fixture(autouse=True)
+def in_empty_folder(tmp_path, monkeypatch):
+    monkeypatch.chdir(tmp_path)
+
+
+def test_check_says_what_a_survey_holds():
+    """Groups, fields, area and stars, as numbers."""
+    record = steps.check(DEMO)
+    survey = read_survey(DEMO)
+    assert [group["stars"] for group in record["groups"]] == [int(group.counts.sum()) for group in survey.groups]
+    assert [group["fields"] for group in record["groups"]] == [18, 6]
+
+
+def test_predict_writes_tables_that_equal_the_arrays():
+    """The numbers of the table on disk are those returned, with the provenance beside them."""
+    done = steps.predict(DEMO, run="one")
+    table = QTable.read(done.folder / "predicted-wide.ecsv")
+    np.testing.assert_array_equal(table["expected"], done.prediction.groups["wide"].expected.ravel())
+    assert table.meta["run"] == "one"
+    assert {Path(entry["path"]).name for entry in table.meta["provenance"]["inputs"]} >= {"survey.toml", "truth.toml"}
+
+
+def test_a_run_holds_all_that_its_page_needs(tmp_path):
+    """The page of a run is drawn from the run's folder: the survey may be gone by then."""
+    copy = tmp_path / "mine"
+    copy.mkdir()
+    for path in DEMO.iterdir():
+        (copy / path.name).write_bytes(path.read_bytes())
+    done = steps.predict(copy)
+    for path in copy.iterdir():
+        path.unlink()
+    again = steps.report(done.folder.name)
+    assert Path(again.record["page"]).is_file()
+    np.testing.assert_array_equal(again.prediction.groups["wide"].expected, done.prediction.groups["wide"].expected)
+
+
+def test_reporting_twice_leaves_one_page():
+    """A page is replaced whole, and the tables of the run stay as they were."""
+    done = steps.predict(DEMO, run="twice")
+    before = (done.folder / "fields.ecsv").read_bytes()
+    steps.report("twice")
+    steps.report("twice")
+    assert (done.folder / "fields.ecsv").read_bytes() == before
+    assert sorted(path.name for path in Path("outputs").iterdir()) == ["twice"]
+
+
+def test_count_writes_a_survey_that_can_be_fitted():
+    """Stars put into known fields come back as counts in the survey that is written."""
+    fields = read_survey(DEMO).groups[1].fields
+    lines = ["l,b,Vmag"] + [
+        f"{l},{b},{10.5 + i}" for i, (l, b) in enumerate(zip(fields.l_deg, fields.b_deg, strict=True))
+    ]
+    Path("stars.csv").write_text("\n".join([*lines, f"{fields.l_deg[0]},{fields.b_deg[0]},"]) + "\n")
+    done = steps.count(DEMO, ["stars.csv"], group="visual", out="counted")
+    counted = read_survey("counted")
+    np.testing.assert_array_equal(counted.groups[1].counts.sum(axis=1)[:5], 1)
+    np.testing.assert_array_equal(counted.groups[0].counts, read_survey(DEMO).groups[0].counts)
+    result = done.record["result"]
+    assert result["rows"] == 7
+    assert result["dropped"]["magnitude missing"] == 1
+    assert result["rows"] == result["counted"] + sum(result["dropped"].values())
+
+
+@pytest.mark.parametrize(
+    ("arguments", "said"),
+    [
+        (["predict", "nowhere"], "nowhere"),
+        (["predict", str(DEMO), "--galaxy", "andromeda"], "andromeda"),
+        (["predict", str(DEMO), "--run", "../up"], "run name '../up'"),
+        (["fit", str(DEMO), "--free", "thin.h_q_kpc"], "thin.h_q_kpc"),
+        (["report", "nowhere"], "nowhere: not a run"),
+        (["count", str(DEMO), "nowhere.fits"], "nowhere.fits"),
+    ],
+)
+def test_bad_input_is_one_line_and_nothing_is_written(arguments, said, capsys):
+    """Status 2, one line that names what is wrong, and no trace in the outputs folder."""
+    assert main(arguments) == 2
+    lines = [line for line in capsys.readouterr().err.splitlines() if line.startswith("starcount: ")]
+    assert len(lines) == 1
+    assert said in lines[0]
+    assert not Path("outputs").exists()
+
+
+def test_a_count_is_not_a_run_to_draw():
+    """``report`` says which runs have a page."""
+    Path("stars.csv").write_text("l,b,Vmag\n5.0,-38.0,10\n")
+    steps.count(DEMO, ["stars.csv"], group="visual")
+    with pytest.raises(InputError, match="made by 'count'; expected a run of predict"):
+        steps.report("demo-counts")
+
+
+def test_an_unknown_galaxy_lists_those_there_are():
+    """The message says what would work."""
+    with pytest.raises(UnknownName, match=r"known: .*default"):
+        steps.predict(DEMO, galaxy="andromeda")
+
+
+def test_json_is_alone_on_standard_output(capsys):
+    """A pipe can parse what a command prints."""
+    assert main(["predict", str(DEMO), "--json"]) == 0
+    assert json.loads(capsys.readouterr().out)["step"] == "predict"
