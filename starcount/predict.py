@@ -183,12 +183,13 @@ def predict_counts(
     if values is not None and posterior is not None:
         raise InputError("predict_counts: both values and a posterior given; expected one of them")
     if posterior is None:
-        groups = _from_values(model, {**model.galaxy.values, **(values or {})})
-        source = "values"
+        values, source = {**model.galaxy.values, **(values or {})}, "values"
+        groups = [_from_values(part, values) for part in model.groups]
     else:
-        groups = _from_posterior(model, posterior, seed, draws)
         source = "posterior" if posterior.certified else "uncertified draws"
-    return as_prediction(model.survey, groups, source)
+        chosen = np.unique(np.linspace(0, posterior.size - 1, draws).astype(int))
+        groups = [_group_draws(part, posterior, chosen, seed) for part in model.groups]
+    return as_prediction(model.survey, {prediction.group.name: prediction for prediction in groups}, source)
 
 
 def as_prediction(survey: Survey, groups: Mapping[str, GroupPrediction], source: str) -> Prediction:
@@ -198,17 +199,9 @@ def as_prediction(survey: Survey, groups: Mapping[str, GroupPrediction], source:
     return Prediction(survey, source, groups, bins, fields)
 
 
-def _from_values(model, values) -> dict[str, GroupPrediction]:
-    groups = {}
-    for part in model.groups:
-        parts = part.expected(values, parts=True)
-        groups[part.group.name] = GroupPrediction(part.group, sum(parts.values()), parts)
-    return groups
-
-
-def _from_posterior(model, posterior, seed, draws) -> dict[str, GroupPrediction]:
-    chosen = np.unique(np.linspace(0, posterior.size - 1, draws).astype(int))
-    return {part.group.name: _group_draws(part, posterior, chosen, seed) for part in model.groups}
+def _from_values(part, values) -> GroupPrediction:
+    parts = part.expected(values, parts=True)
+    return GroupPrediction(part.group, sum(parts.values()), parts)
 
 
 def _group_draws(part, posterior, chosen, seed) -> GroupPrediction:

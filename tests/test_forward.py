@@ -38,22 +38,22 @@ def sky(default):
 @pytest.mark.parametrize(("l", "b"), [(0, 90), (0, -30), (40, 10), (180, -25), (320, -4), (100, 2)])
 @pytest.mark.parametrize("band", ["G", "V"])
 def test_the_twin_agrees(default, l, b, band):  # noqa: E741
-    """Adaptive quadrature with laws, frame and dust written independently: 2e-4, twice what a line is settled to."""
+    """Adaptive quadrature with laws, frame and dust written independently: 1e-4, twice what a line is settled to."""
     fields = skies.circles(l, b, 0.05)
     edges = np.array([7.0, 8.0, 12.0, 12.5, 18.0, 18.5, 20.0])
     group = ForwardModel(skies.survey(fields, edges, band), default).groups[0]
     found = group.expected()[0]
     wanted = twin.expected(default, group.lf, stars.M_EDGES_MAG, l, b, fields.area_deg2[0], edges, band_coefficient(band))
-    assert_allclose(found, wanted, rtol=2e-4)
+    assert_allclose(found, wanted, rtol=1e-4)
 
 
 def test_uniform_space():
     """N = n Omega / 3 integral of d^3 dlf: counts grow as 10^(0.6 m), the depth as the cube root (Seeliger 1898)."""
-    edges = np.array([4.0, 5.0, 6.0, 7.0])
+    edges = np.array([9.0, 10.0, 11.0, 12.0])
     galaxy = skies.galaxy("uniform", [], value=1e-3)
     group = ForwardModel(skies.survey(skies.circles(0, 90, 1.0, **NO_DUST), edges), galaxy).groups[0]
     found = group.expected()[0]
-    # Stars fainter than M = 8 are left out: the nearest nodes, at 2.5 pc, must not be missed.
+    # The nearest nodes, at 2.5 pc, do not miss stars brighter than M = 12, and fainter ones do not matter here.
     lf = group.lf.sum(axis=(0, 1))
     middle = (stars.M_EDGES_MAG[1:] + stars.M_EDGES_MAG[:-1]) / 2
     cube = 1e3 * 10 ** (0.6 * (edges[:, None] - middle))  # pc^3 out to which a star of M is brighter than m
@@ -75,18 +75,20 @@ def test_exponential_disc_at_the_pole():
     assert_allclose(group.expected()[:, 0], wanted, rtol=2e-4)
 
 
-def test_the_rule_converges_at_its_order():
-    """Three Gauss-Legendre points: halving the panels gains 2^6; a slope of 5.5 to 6.5 between 1e-3 and 1e-9."""
-    exact = quad(lambda mu: 10 ** (0.6 * mu) * np.exp(-(10 ** (mu / 5 + 1)) / 300.0), -3, 15, epsabs=0, epsrel=1e-13)[0]
+def test_the_rule_converges_at_its_order(monkeypatch):
+    """Three Gauss-Legendre points: halving panels gains 2^6 on a stretch that does not vanish at its end."""
+    monkeypatch.setattr(nodes_module, "PANEL_MAG", 5.0)
+    end = nodes_module.panel_limits_mag(np.full((1, 2), np.nan), 0)[0, 2]  # 6.2 mag, 174 pc
+    per_mu = lambda mu: 10 ** (0.6 * mu) * np.exp(-(10 ** (mu / 5 + 1)) / 300.0)  # noqa: E731
+    exact = quad(per_mu, -3, end, epsabs=0, epsrel=1e-13)[0]
     errors = []
     for halvings in (0, 1, 2):
         n = place_nodes([0.0], [90.0], 8.178, 0.0208, halvings)
-        d_pc = 1e3 * n.d_kpc[0]
-        near = n.mu_mag[0] < 15.0
-        total = (n.volume_pc3[0] * np.exp(-d_pc / 300.0))[near].sum() / (np.log(10) / 5 * 1e3)
+        near = n.mu_mag[0] < end
+        total = (n.volume_pc3[0] * np.exp(-1e3 * n.d_kpc[0] / 300.0))[near].sum() / (np.log(10) / 5 * 1e3)
         errors.append(abs(total / exact - 1))
     order = -np.polyfit(np.arange(3), np.log2(errors), 1)[0]
-    assert 5.5 < order < 6.7, errors
+    assert 5.5 < order < 6.5, errors
 
 
 def test_panels_meet_the_kinks():
@@ -99,13 +101,15 @@ def test_panels_meet_the_kinks():
         assert np.abs(limits[0] - (5 * np.log10(kink) + 10)).min() < 1e-12
 
 
-def test_the_galaxy_ends_far_enough(default, monkeypatch):
-    """Counts to G = 21 at the pole and towards the centre lose less than 1e-4 by ending at 100 kpc."""
+def test_where_the_galaxy_ends(default, monkeypatch):
+    """A halo that went on as a power law to 1000 kpc would add less than 1 % at 20 < G < 21, at the pole and at b = 40."""
     fields = skies.circles([0, 0], [90, 40], 0.1)
     make = lambda: ForwardModel(skies.survey(fields, np.array([20.0, 21.0]), "G"), default).groups[0].expected()  # noqa: E731
-    near = make()
+    ends = make()
     monkeypatch.setattr(nodes_module, "D_MAX_KPC", 1000.0)
-    assert_allclose(near, make(), rtol=1e-4)
+    farther = make()
+    assert (farther > ends).all()
+    assert_allclose(ends, farther, rtol=0.01)
 
 
 def test_every_gradient(sky):
@@ -229,7 +233,7 @@ def test_sphere_means_against_brute_force(default):
     l, b, d = np.degrees(np.arctan2(p[:, 1], p[:, 0])), np.degrees(np.arcsin(p[:, 2] / np.linalg.norm(p, axis=1))), np.linalg.norm(p, axis=1)  # noqa: E741, E501
     place = default.place(l, b, d)
     means = sphere_means(default, np.array([100.0]))[:, 0]
-    for row in range(len(default.layers)):
+    for row in np.flatnonzero([c.anchor == "sun" for c, _ in default.layers]):
         assert_allclose(means[row], np.exp(default.ln_relative_density(row, *place)).mean(), rtol=2e-3)
 
 
@@ -247,6 +251,7 @@ def test_extra_rows_are_their_surface_density_times_the_area(default):
     fields = skies.circles([10, 20], [60, -70], 0.4)
     with_rows = ForwardModel(skies.survey(fields, np.array([18.0, 19.0]), "G", extra=("quasars", "galaxies")), default)
     parts = with_rows.groups[0].expected(parts=True)
-    # 6.56 quasars and 9.34 galaxies per square degree at 18 < G < 19, |b| > 60: own estimate from published counts.
+    # 6.56 quasars per square degree; with galaxies 3.63 % of Gaia's 416 at |b| > 60: estimates from published counts.
     assert_allclose(parts["quasars"][:, 0], 6.56 * fields.area_deg2, rtol=1e-3)
-    assert_allclose(parts["galaxies"][:, 0], 9.34 * fields.area_deg2, rtol=1e-3)
+    both = parts["quasars"][:, 0] + parts["galaxies"][:, 0]
+    assert_allclose(both, 0.0363 * 416.0 * fields.area_deg2, rtol=2e-3)

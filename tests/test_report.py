@@ -189,8 +189,15 @@ def test_what_was_counted_is_said(written):
     """Band, magnitude system, closed and open edges, area, stars, dust and completeness."""
     text = (written / "report.html").read_text(encoding="utf-8")
     stars = int(invented.survey().groups[0].counts.sum())
-    for words in ("Gaia G, Vega magnitudes", "closed at the bright and open at the faint edge", f"{stars} in 240 bins",
-                  "24 with 96.0004 deg²", "every star counted", "10 of 1 mag from 10 to 20", "Invented data"):  # fmt: skip
+    for words in (
+        "Gaia G, Vega magnitudes",
+        "closed at the bright and open at the faint edge",
+        f"{stars} in 240 bins",
+        "24 with 96.0004 deg²",
+        "every star counted",
+        "10 of 1 mag from 10 to 20",
+        "Invented data",
+    ):
         assert words in text
 
 

@@ -16,7 +16,7 @@ from starcount.galaxy import Galaxy
 from starcount.survey import Group
 
 _CELLS = np.array([stars.M_EDGES_MAG[0], 1.0 / (stars.M_EDGES_MAG[1] - stars.M_EDGES_MAG[0])])
-ACCURACY = 1e-4
+ACCURACY = 5e-5
 """Part of a bin by which one more halving of a line's panels may change it."""
 
 _LAST_Y_MAG = 60.0  # beyond any magnitude, however much dust

@@ -42,7 +42,7 @@ def _field_label(fields, name: str) -> str:
 
 
 def _panels(bands: Sequence[Band], band_name: str) -> Figure:
-    columns = min(COLUMNS, len(bands))
+    columns = 2 if len(bands) == 4 else min(COLUMNS, len(bands))
     rows = -(-len(bands) // columns)
     figure = new_figure(rows * PANEL_HEIGHT_INCH + 0.5)
     ratios = [3, 1.3] * rows if bands[0].compared else [3] * rows
@@ -73,7 +73,7 @@ def _draw_counts(axes, band: Band) -> None:
     unit, edges = band.per_deg2_mag, band.edges_mag
     for (name, counts), (colour, dashes) in zip(band.parts.items(), _lines(len(band.parts)), strict=True):
         axes.stairs(counts / unit, edges, color=colour, linestyle=dashes, label=_plain(name), baseline=None, zorder=3)
-    axes.stairs(band.total.expected / unit, edges, color=BLACK, linewidth=2.2, label="model", baseline=None)
+    axes.stairs(band.total.expected / unit, edges, color=BLACK, linewidth=1.8, label="model", baseline=None)
     if band.draws is not None:
         low, high = np.percentile(band.draws, [2.5, 97.5], axis=0) / unit
         axes.stairs(high, edges, baseline=low, fill=True, color=PALE, label="model, 95 %", zorder=0)

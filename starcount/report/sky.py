@@ -39,7 +39,7 @@ def sky_residuals(content: PageContent, group: str) -> Figure:
         chosen = known & (pull >= low) & (pull < high)
         axes.scatter(
             x[chosen], y[chosen], size, ratio[chosen], marker=marker, norm=norm, cmap=DIVERGING, edgecolors=BLACK,
-            linewidths=0.4 + 0.25 * (low > 0), zorder=3, label=f"{label} ({chosen.sum()})",
+            linewidths=0.4 + 0.25 * (low > 0), zorder=3, clip_on=False, label=f"{label} ({chosen.sum()})",
         )  # fmt: skip
     if (~known).any():
         axes.scatter(
