@@ -140,14 +140,15 @@ def test_laws_lists_units_and_sources(capsys):
 
 
 def test_plain_progress_waits_and_then_estimates(capsys):
-    """Short work says nothing; long work says at most one line every ten seconds, with the time left."""
-    now = iter([0.0, 1.0, 3.0, 4.0, 14.0])
+    """Short work says nothing; long work names each new thing, then a line every ten seconds, with the time left."""
+    now = iter([0.0, 1.0, 3.0, 4.0, 14.0, 15.0])
     tell = screen._plain(lambda: next(now))
-    for done in range(5):
-        tell("sampling", done / 10)
+    for what, share in [("reading", 0.1), ("reading", 0.2), ("reading", 0.3), ("reading", 0.4), ("writing", 0.5)]:
+        tell(what, share)
     assert capsys.readouterr().err.splitlines() == [
-        "sampling: 20 %, about 12 s left",
-        "sampling: 40 %, about 21 s left",
+        "reading: 20 % of all, about 12 s left",
+        "reading: 40 % of all, about 21 s left",
+        "writing: 50 % of all, about 15 s left",
     ]
 
 

@@ -12,7 +12,7 @@ from numpy.testing import assert_allclose
 from scipy.integrate import quad
 from starcount import stars
 from starcount.dust import band_coefficient
-from starcount.forward import ForwardModel, census_density_pc3, layer_functions, sphere_means
+from starcount.forward import ForwardModel, census_density_pc3, derived_quantities, layer_functions, sphere_means
 from starcount.forward import nodes as nodes_module
 from starcount.forward.kernels import luminosity, luminosity_back, stars_on_grid
 from starcount.forward.nodes import place_nodes
@@ -255,3 +255,19 @@ def test_extra_rows_are_their_surface_density_times_the_area(default):
     assert_allclose(parts["quasars"][:, 0], 6.56 * fields.area_deg2, rtol=1e-3)
     both = parts["quasars"][:, 0] + parts["galaxies"][:, 0]
     assert_allclose(both, 0.0363 * 416.0 * fields.area_deg2, rtol=2e-3)
+
+
+def test_derived_quantities_of_one_disc():
+    """An exponential disc has its own scale height as effective height, and Sigma = 2 n(0) h_z (closed forms)."""
+    one = skies.galaxy("disc", [2.6, 0.28, 0, 1000, 1, 0], value=1e-3, z0_kpc=0.0)
+    found = derived_quantities(one)({})
+    assert_allclose(found["effective_height_kpc"], 0.28, rtol=1e-9)
+    assert_allclose(found["only.surface_pc2"], 2 * 1e-3 * 280.0, rtol=1e-6)
+
+
+def test_derived_quantities_of_the_default(default):
+    """Surface ratio share x h_thick / h_thin, 0.12 x 0.85 / 0.30 within the layers' share, as Juric et al. 2008: 0.36."""
+    found = derived_quantities(default)({})
+    sun = np.exp(0.0208 / 0.85 - 0.0208 / 0.30)  # amplitudes are defined at the Sun, not in the plane
+    assert_allclose(found["thick.surface_ratio"], 0.12 * 0.85 / 0.30 * sun, rtol=0.01)
+    assert 0.30 < found["effective_height_kpc"] < 0.60

@@ -149,6 +149,7 @@ def test_variance_of_a_field_total_adds_shared_errors_before_squaring(from_poste
     own = group.draws.mean(axis=0) + (floor[:, None, None] ** 2 * group.draws**2).mean(axis=0)
     variance = own.sum(axis=1) + group.draws.sum(axis=2).var(axis=0)
     assert_allclose(from_posterior.fields["sd"], np.sqrt(variance), rtol=1e-10)
+    assert_allclose(from_posterior.bins["all"]["sd"], np.sqrt(own + group.draws.var(axis=0)).ravel(), rtol=1e-10)
 
 
 def test_parts_of_a_posterior_sum_to_its_mean(from_posterior, model):

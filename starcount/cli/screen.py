@@ -9,7 +9,7 @@ from contextlib import contextmanager
 import click
 
 Progress = Callable[[str, float], None]
-"""``progress(what, share)``, called by a step as it goes; the share that is done lies between 0 and 1."""
+"""``progress(what, share)``, told by a step what it does now, and which share of all is done, 0 to 1."""
 
 QUIET_S = 2.0
 """Work shorter than this shows no progress."""
@@ -88,33 +88,33 @@ def _bar() -> Iterator[Progress]:
     from rich.progress import Progress as Bars
     from rich.progress import TimeElapsedColumn, TimeRemainingColumn
 
-    tasks: dict = {}
     looks = (*Bars.get_default_columns()[:-1], TimeElapsedColumn(), TimeRemainingColumn())
-    bars = Bars(*looks, console=Console(stderr=True))
+    bars = Bars(*looks, console=Console(stderr=True), transient=True)
+    task = bars.add_task("", total=1.0, visible=False)
+    start = time.monotonic()
 
     def tell(what: str, share: float) -> None:
-        if what not in tasks:
-            tasks[what] = (bars.add_task(what, total=1.0, visible=False), time.monotonic())
-        task, start = tasks[what]
-        bars.update(task, completed=share, visible=time.monotonic() - start > QUIET_S)
+        shown = time.monotonic() - start > QUIET_S
+        bars.update(task, description=what, completed=share, visible=shown)
 
     with bars:
         yield tell
 
 
 def _plain(clock: Callable[[], float]) -> Progress:
-    """Lines such as ``sampling: 30 %, about 35 s left``, at most one every ten seconds."""
-    start: dict[str, float] = {}
-    last: dict[str, float] = {}
+    """Lines such as ``sampling: 30 % of all, about 35 s left``: one for each new thing, then one every ten seconds."""
+    begun = last = clock()
+    doing = ""
 
     def tell(what: str, share: float) -> None:
+        nonlocal last, doing
         now = clock()
-        begun = start.setdefault(what, now)
-        due = last.get(what, begun + QUIET_S - PLAIN_LINE_EVERY_S) + PLAIN_LINE_EVERY_S
-        if now < due or not 0.0 < share < 1.0:
+        due = now - last >= PLAIN_LINE_EVERY_S or what != doing
+        if now - begun < QUIET_S or not due or share >= 1.0:
             return
-        last[what] = now
-        say(f"{what}: {100 * share:.0f} %, about {(now - begun) * (1 - share) / share:.0f} s left")
+        last, doing = now, what
+        left = f", about {(now - begun) * (1 - share) / share:.0f} s left" if share > 0 else ""
+        say(f"{what}: {100 * share:.0f} % of all{left}")
 
     return tell
 

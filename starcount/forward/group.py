@@ -11,7 +11,7 @@ from starcount.forward.extra import extra_rows
 from starcount.forward.lines import group_lines
 from starcount.forward.luminosity import layer_functions, sphere_points
 from starcount.forward.nodes import MU_FIRST_MAG
-from starcount.forward.projection import Lines, Projection, make_projection, y_grid
+from starcount.forward.projection import Y_STEP_MAG, Lines, Projection, make_projection, y_grid
 from starcount.galaxy import Galaxy
 from starcount.survey import Group
 
@@ -70,15 +70,15 @@ def make_group_model(group: Group, galaxy: Galaxy, accuracy: float = ACCURACY) -
     lf = layer_functions(galaxy, group.band)
     true_edges, response = group.observation.matrix(group.edges_mag)
     M_range = _occupied(lf)
-    y_range = (true_edges[0] - M_range[1], true_edges[-1] - M_range[0])
+    reach = layer_reach(lf, true_edges[0], true_edges[-1])
     y = y_grid(true_edges, M_range, (MU_FIRST_MAG, _LAST_Y_MAG))
     lf_arrays = _lf_arrays(y, true_edges[:-1], true_edges[1:], np.full(true_edges.size - 1, -1), response)
     v, W, table = galaxy.vector(), kernels.luminosity(lf, *lf_arrays), galaxy.layer_table()
 
     def count(lines: Lines) -> np.ndarray:
-        return make_projection(table, galaxy.R0_kpc, lines, y).counts(v, W)
+        return make_projection(table, galaxy.R0_kpc, lines, y, reach).counts(v, W)
 
-    lines = group_lines(group, galaxy, count, y_range, accuracy)
+    lines = group_lines(group, galaxy, count, (reach[:, 0].min(), reach[:, 1].max()), accuracy)
     rows = extra_rows(group.extra, group.band, group.edges_mag) if group.extra else np.zeros((0, group.edges_mag.size - 1))
     return GroupModel(
         name=group.name,
@@ -86,12 +86,26 @@ def make_group_model(group: Group, galaxy: Galaxy, accuracy: float = ACCURACY) -
         galaxy=galaxy,
         counts=group.counts,
         used=group.used,
-        projection=make_projection(table, galaxy.R0_kpc, lines, y),
+        projection=make_projection(table, galaxy.R0_kpc, lines, y, reach),
         lf=lf,
         lf_arrays=lf_arrays,
         extra_names=tuple(group.extra),
         extra=rows[:, None, :] * group.fields.area_deg2[None, :, None],
     )
+
+
+def layer_reach(lf: np.ndarray, m_first: float, m_last: float) -> np.ndarray:
+    """Return the shifts y (layer, 2) between which each layer's stars can fall between two magnitudes.
+
+    Two steps of the grid to spare, which the spline reaches over. A layer without stars reaches nothing.
+    """
+    reach = np.zeros((len(lf), 2))
+    for k, layer in enumerate(lf.sum(axis=1)):
+        cells = np.flatnonzero(layer)
+        if cells.size:
+            brightest, faintest = stars.M_EDGES_MAG[cells[0]], stars.M_EDGES_MAG[cells[-1] + 1]
+            reach[k] = m_first - faintest - 2.0 * Y_STEP_MAG, m_last - brightest + 2.0 * Y_STEP_MAG
+    return reach
 
 
 def _occupied(lf: np.ndarray) -> tuple[float, float]:
@@ -137,7 +151,7 @@ def make_census_model(galaxy: Galaxy, band: str) -> GroupModel:
         galaxy=galaxy,
         counts=np.where(used, census.n, 0),
         used=used,
-        projection=make_projection(galaxy.layer_table(), galaxy.R0_kpc, lines, y),
+        projection=make_projection(galaxy.layer_table(), galaxy.R0_kpc, lines, y, np.tile([-1.0, 1.0], (len(galaxy.layers), 1))),
         lf=layer_functions(galaxy, band),
         lf_arrays=_lf_arrays(y, census.M_lo, census.M_hi, census.class_index.astype(np.int64), response),
         extra_names=(),

@@ -36,7 +36,8 @@ class Projection:
 
     ``arrays``: index, scale, n_parameter, amplitude, anchor and the three addresses of ``LayerTable``; R0; then
     direction, first_line, first_node, d_kpc, volume, mu, A and node_weight of ``Lines``; class_first (the first layer
-    of each star class, and the end); and the grid's first y, steps per mag and length.
+    of each star class, and the end); the grid's first y, steps per mag and length; and the shifts (layer, 2) between which
+    a layer can put stars into the bins.
     """
 
     lines: Lines
@@ -72,8 +73,13 @@ def y_grid(m_edges_mag, M_range_mag, y_range_mag) -> np.ndarray:
     return start + Y_STEP_MAG * np.arange(max(int(np.ceil((last - start) / Y_STEP_MAG)) + 1, 5))
 
 
-def make_projection(table: LayerTable, R0_kpc: float, lines: Lines, y_mag: np.ndarray) -> Projection:
-    """Return the projection of a Galaxy's layers along sight lines. All layers share one star class."""
+def make_projection(
+    table: LayerTable, R0_kpc: float, lines: Lines, y_mag: np.ndarray, y_reach_mag: np.ndarray
+) -> Projection:
+    """Return the projection of a Galaxy's layers along sight lines. All layers share one star class.
+
+    Stars of a layer outside ``y_reach_mag`` (layer, 2) are left out of the sums.
+    """
     n_layer = len(table.component)
     arrays = (
         table.index.astype(np.int64),
@@ -95,5 +101,6 @@ def make_projection(table: LayerTable, R0_kpc: float, lines: Lines, y_mag: np.nd
         lines.node_weight,
         np.array([0, n_layer]),
         np.array([y_mag[0], 1.0 / (y_mag[1] - y_mag[0]), float(y_mag.size)]),
+        y_reach_mag.astype(float),
     )
     return Projection(lines=lines, y_mag=y_mag, arrays=tuple(np.ascontiguousarray(a) for a in arrays))

@@ -24,6 +24,11 @@ def silent(what: str, share: float) -> None:
     """Progress that nobody watches."""
 
 
+def stretch(progress: Progress, first: float, last: float) -> Progress:
+    """Progress of a part that fills the shares from ``first`` to ``last`` of the whole."""
+    return lambda what, share: progress(what, first + (last - first) * share)
+
+
 def check(survey: str | Path) -> dict:
     """Read a survey with full checking; return what it holds. Raises ``Problems`` with everything that is wrong."""
     return record.of_survey(read_survey(survey))
@@ -161,9 +166,9 @@ def demo(*, quick: bool = False, progress: Progress = silent) -> Run:
     if quick:
         _predict(DEMO_SURVEY, truth.galaxy, truth.values, DEMO_RUN)
     else:
-        free = list(truth.values)
-        fit(DEMO_SURVEY, galaxy=truth.galaxy, free=free, run=DEMO_RUN, accept_failed=True, progress=progress)
-    done = report(DEMO_RUN, progress=progress)
+        options = {"galaxy": truth.galaxy, "free": list(truth.values), "run": DEMO_RUN, "accept_failed": True}
+        fit(DEMO_SURVEY, **options, progress=stretch(progress, 0, 0.9))
+    done = report(DEMO_RUN, progress=stretch(progress, 0.9, 1))
     if done.posterior is not None and not done.posterior.certified:
         raise FailedChecks(f"{done.folder}: FAILED CHECKS\n{done.posterior.verdict}")
     return done

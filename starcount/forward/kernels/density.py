@@ -32,12 +32,13 @@ def layer_numbers(v, arrays):
 
 @kernel
 def place(direction, d_kpc, R0, z0, at):
-    """Galactocentric R, cos phi, sin phi and z (4, node) at distances along a direction (see ``galaxy.frame``)."""
-    R, cos_phi, sin_phi, z = at[0], at[1], at[2], at[3]
+    """Galactocentric R, cos phi, sin phi and z (first rows of ``at``) along a direction (see ``galaxy.frame``)."""
+    n = d_kpc.size
+    R, cos_phi, sin_phi, z = at[0, :n], at[1, :n], at[2, :n], at[3, :n]
     sine = z0 / R0
     cosine = np.sqrt(1.0 - sine * sine)
     a, b, c = direction[0], direction[1], direction[2]
-    for j in range(d_kpc.size):
+    for j in range(n):
         X, Z = d_kpc[j] * a - R0, d_kpc[j] * c
         x, y = cosine * X + sine * Z, d_kpc[j] * b
         r = np.sqrt(x * x + y * y)
@@ -49,22 +50,58 @@ def place(direction, d_kpc, R0, z0, at):
 
 
 @kernel
-def count_stars(theta, ln_scale, density_at, volume, at, stars):
-    """Stars (layer, node) of the reference window in each node's volume."""
-    n = volume.size
-    for k in range(ln_scale.size):
-        row, shift = stars[k], ln_scale[k]
-        call_law(density_at[k], n, theta[k], at[0], at[1], at[2], at[3], row)
-        for j in range(n):
-            row[j] = volume[j] * exp(row[j] + shift)
+def first_at_least(mu, A, factor, y):
+    """Index of the first node of a line whose shift mu + factor A reaches ``y``; shifts grow with distance."""
+    low, high = 0, mu.size
+    while low < high:
+        middle = (low + high) // 2
+        if mu[middle] + factor * A[middle] < y:
+            low = middle + 1
+        else:
+            high = middle
+    return low
 
 
 @kernel
-def line_stars(s, v, theta, ln_scale, arrays, at, stars):
-    """Coordinates and stars of sight line ``s``: views (4, node) and (layer, node) of the work space."""
-    direction, first_node, d_kpc, volume = arrays[9], arrays[11], arrays[12], arrays[13]
+def find_reach(s, factor, arrays, reach):
+    """Write the nodes of sight line ``s`` from and to which each layer can put stars into the bins: (layer, 2)."""
+    first_node, mu, A = arrays[11], arrays[14], arrays[15]
+    class_first, y_reach = arrays[17], arrays[19]
     a, b = first_node[s], first_node[s + 1]
-    here, found = at[:, : b - a], stars[:, : b - a]
-    place(direction[s], d_kpc[a:b], arrays[8][0], v[-1], here)
-    count_stars(theta, ln_scale, arrays[5], volume[a:b], here, found)
-    return here, found
+    last = A.shape[1] - 1  # extinction nodes grow: the first is the clearest
+    for c in range(class_first.size - 1):
+        for k in range(class_first[c], class_first[c + 1]):
+            reach[k, 0] = first_at_least(mu[a:b], A[c, last, a:b], factor, y_reach[k, 0])
+            reach[k, 1] = max(first_at_least(mu[a:b], A[c, 0, a:b], factor, y_reach[k, 1]), reach[k, 0])
+
+
+@kernel
+def count_stars(theta, ln_scale, density_at, volume, at, reach, row, stars):
+    """Stars (node, layer) of the reference window in each node's volume; 0 where a layer reaches no bin."""
+    stars[:] = 0.0
+    for k in range(ln_scale.size):
+        i, j = reach[k, 0], reach[k, 1]
+        call_law(density_at[k], j - i, theta[k], at[0, i:j], at[1, i:j], at[2, i:j], at[3, i:j], row)
+        # Slices first: an index i + m may be negative to the compiler, and its check would stop the vector code.
+        here, mine, shift = volume[i:j], stars[i:j], ln_scale[k]
+        for m in range(j - i):
+            row[m] = here[m] * exp(row[m] + shift)
+        for m in range(j - i):
+            mine[m, k] = row[m]
+
+
+@kernel
+def line_stars(s, v, theta, ln_scale, factor, arrays, space):
+    """Place sight line ``s`` and count its stars; return them (node, layer), a view of the work space.
+
+    ``space``: coordinates (5, node), stars (node, layer) and reach (layer, 2). Rows of the coordinates are sliced one
+    by one: a slice in both directions would not be contiguous to the compiler, and its loops twice as slow.
+    """
+    direction, first_node, d_kpc, volume = arrays[9], arrays[11], arrays[12], arrays[13]
+    at, stars, reach = space
+    a, b = first_node[s], first_node[s + 1]
+    found = stars[: b - a]
+    find_reach(s, factor, arrays, reach)
+    place(direction[s], d_kpc[a:b], arrays[8][0], v[-1], at)
+    count_stars(theta, ln_scale, arrays[5], volume[a:b], at, reach, at[4], found)
+    return found

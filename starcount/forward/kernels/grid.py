@@ -4,48 +4,63 @@ The weights are those of the Catmull-Rom spline (Catmull & Rom 1974): cubic, int
 that the derivative by the extinction is exact and smooth. Stars outside the grid are brighter or fainter than every bin.
 """
 
+import numpy as np
+
 from starcount.compilation import kernel
 
 
 @kernel
-def scatter(stars, mu, A, factor, weight, grid_start, first, last, grid):
-    """Add the stars (layer, node) of layers first..last to the grid (y, layer)."""
-    y0, per_dy, top = grid_start[0], grid_start[1], grid.shape[0] - 3
-    for j in range(mu.size):
+def spline_weights(mu, A, factor, weight, grid_start, n_y):
+    """For each node the first of the four rows of the grid it meets, their weights (4, node), and where it lies (0..1).
+
+    Nodes outside the grid get the weight zero.
+    """
+    n, y0, per_dy, top = mu.size, grid_start[0], grid_start[1], float(n_y - 3)
+    row, w, part = np.empty(n, np.int64), np.empty((4, n)), np.empty(n)
+    w0, w1, w2, w3 = w[0], w[1], w[2], w[3]
+    for j in range(n):
         p = (mu[j] + factor * A[j] - y0) * per_dy
-        if p < 1.0 or p >= top + 1.0:
-            continue
+        inside = weight if (p >= 1.0) & (p < top + 1.0) else 0.0
+        p = min(max(p, 1.0), top)
         i = int(p)
         t = p - i
-        t2, t3 = t * t, t * t * t
-        w0, w1 = weight * (t2 - 0.5 * (t3 + t)), weight * (1.5 * t3 - 2.5 * t2 + 1.0)
-        w2, w3 = weight * (2.0 * t2 - 1.5 * t3 + 0.5 * t), weight * 0.5 * (t3 - t2)
-        g0, g1, g2, g3 = grid[i - 1], grid[i], grid[i + 1], grid[i + 2]
+        row[j] = i - 1
+        part[j] = t
+        w0[j] = inside * t * (t - 0.5 - 0.5 * t * t)
+        w1[j] = inside * (1.0 + t * t * (1.5 * t - 2.5))
+        w2[j] = inside * t * (0.5 + t * (2.0 - 1.5 * t))
+        w3[j] = inside * 0.5 * t * t * (t - 1.0)
+    return row, w, part
+
+
+@kernel
+def scatter(stars, mu, A, factor, weight, grid_start, first, last, grid):
+    """Add the stars (node, layer) of layers first..last to the grid (y, layer)."""
+    row, w, _ = spline_weights(mu, A, factor, weight, grid_start, grid.shape[0])
+    w0, w1, w2, w3 = w[0], w[1], w[2], w[3]
+    for j in range(mu.size):
+        rows, here = grid[row[j] : row[j] + 4], stars[j]
+        a, b, c, d = w0[j], w1[j], w2[j], w3[j]
         for k in range(first, last):
-            s = stars[k, j]
-            g0[k] += w0 * s
-            g1[k] += w1 * s
-            g2[k] += w2 * s
-            g3[k] += w3 * s
+            s = here[k]
+            rows[0, k] += a * s
+            rows[1, k] += b * s
+            rows[2, k] += c * s
+            rows[3, k] += d * s
 
 
 @kernel
 def gather(grid, mu, A, factor, weight, grid_start, first, last, value, by_factor):
-    """Add the transpose of ``scatter`` to ``value`` (layer, node), and its derivative by ``factor`` to ``by_factor``."""
-    y0, per_dy, top = grid_start[0], grid_start[1], grid.shape[0] - 3
+    """Add the transpose of ``scatter`` to ``value`` (node, layer), and its derivative by ``factor`` to ``by_factor``."""
+    row, w, part = spline_weights(mu, A, factor, weight, grid_start, grid.shape[0])
     for j in range(mu.size):
-        p = (mu[j] + factor * A[j] - y0) * per_dy
-        if p < 1.0 or p >= top + 1.0:
-            continue
-        i = int(p)
-        t = p - i
-        t2, t3 = t * t, t * t * t
-        w0, w1 = weight * (t2 - 0.5 * (t3 + t)), weight * (1.5 * t3 - 2.5 * t2 + 1.0)
-        w2, w3 = weight * (2.0 * t2 - 1.5 * t3 + 0.5 * t), weight * 0.5 * (t3 - t2)
-        steep = weight * per_dy * A[j]
-        d0, d1 = steep * (2.0 * t - 1.5 * t2 - 0.5), steep * (4.5 * t2 - 5.0 * t)
-        d2, d3 = steep * (4.0 * t - 4.5 * t2 + 0.5), steep * (1.5 * t2 - t)
-        g0, g1, g2, g3 = grid[i - 1], grid[i], grid[i + 1], grid[i + 2]
+        rows, here, bent, t = grid[row[j] : row[j] + 4], value[j], by_factor[j], part[j]
+        a, b, c, d = w[0, j], w[1, j], w[2, j], w[3, j]
+        inside = a + b + c + d  # the weights sum to the node's own, or to zero outside the grid
+        steep = inside * grid_start[1] * A[j]
+        da, db = steep * (2.0 * t - 1.5 * t * t - 0.5), steep * t * (4.5 * t - 5.0)
+        dc, dd = steep * (0.5 + t * (4.0 - 4.5 * t)), steep * t * (1.5 * t - 1.0)
         for k in range(first, last):
-            value[k, j] += w0 * g0[k] + w1 * g1[k] + w2 * g2[k] + w3 * g3[k]
-            by_factor[k, j] += d0 * g0[k] + d1 * g1[k] + d2 * g2[k] + d3 * g3[k]
+            g0, g1, g2, g3 = rows[0, k], rows[1, k], rows[2, k], rows[3, k]
+            here[k] += a * g0 + b * g1 + c * g2 + d * g3
+            bent[k] += da * g0 + db * g1 + dc * g2 + dd * g3

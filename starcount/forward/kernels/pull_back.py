@@ -15,9 +15,9 @@ from starcount.vector_math import exp
 
 
 @kernel
-def height_slopes(R0, z0, at, out):
+def height_slopes(R0, z0, n, at, out):
     """Derivatives (3, node) of R, phi and z by the Sun's height z0."""
-    R, cos_phi, sin_phi, z = at[0], at[1], at[2], at[3]
+    R, cos_phi, sin_phi, z = at[0, :n], at[1, :n], at[2, :n], at[3, :n]
     per = 1.0 / (R0 * np.sqrt(1.0 - (z0 / R0) ** 2))
     by_R, by_phi, by_z = out[0], out[1], out[2]
     for j in range(z.size):
@@ -37,50 +37,57 @@ def dot(a, b):
 
 
 @kernel
-def reverse_line(s, v, theta, arrays, at, stars, value, moved, slopes, g_theta, g_scale):
+def dot3(a, b, c):
+    """The sum of the products of three vectors."""
+    total = 0.0
+    for j in range(a.size):
+        total += a[j] * b[j] * c[j]
+    return total
+
+
+@kernel
+def reverse_line(s, v, theta, arrays, space, n, value, moved, slopes, g_theta, g_scale):
     """Add a sight line's part to the gradients by the layers' numbers; return that by the Sun's height."""
-    n_parameter, slopes_at, n = arrays[2], arrays[6], at.shape[1]
-    height_slopes(arrays[8][0], v[-1], at, moved)
+    n_parameter, slopes_at = arrays[2], arrays[6]
+    at, stars, reach = space
+    height_slopes(arrays[8][0], v[-1], n, at, moved)
     by_height = 0.0
-    q = moved[3]
-    for k in range(stars.shape[0]):
-        P = n_parameter[k]
-        density, got = stars[k], value[k]
-        for j in range(n):
-            q[j] = density[j] * got[j]
-            g_scale[k] += q[j]
-        rows = slopes[: (P + 3) * n]
-        call_law(slopes_at[k], n, theta[k], at[0], at[1], at[2], at[3], rows)
+    for k in range(stars.shape[1]):
+        P, i, size = n_parameter[k], reach[k, 0], reach[k, 1] - reach[k, 0]
+        j, q = i + size, at[4, :size]
+        mine, got = stars[i:j], value[i:j]
+        for m in range(size):
+            q[m] = mine[m, k] * got[m, k]
+        for m in range(size):
+            g_scale[k] += q[m]
+        rows = slopes[: (P + 3) * size]
+        call_law(slopes_at[k], size, theta[k], at[0, i:j], at[1, i:j], at[2, i:j], at[3, i:j], rows)
         for p in range(P):
-            g_theta[k, p] += dot(q, rows[p * n : (p + 1) * n])
-        for i in range(3):
-            row, shift = rows[(P + i) * n : (P + i + 1) * n], moved[i]
-            for j in range(n):
-                by_height += q[j] * row[j] * shift[j]
+            g_theta[k, p] += dot(q, rows[p * size : (p + 1) * size])
+        for c in range(3):
+            by_height += dot3(q, rows[(P + c) * size : (P + c + 1) * size], moved[c, i:j])
     return by_height
 
 
 @kernel
-def reverse_field(f, v, theta, ln_scale, factor, arrays, space, cotangent, g_theta, g_scale):
+def reverse_field(f, v, theta, ln_scale, factor, arrays, space, more, cotangent, g_theta, g_scale):
     """Bring the cotangent (y, layer) of a field back; return its gradients by the Sun's height and by ln dust."""
     first_line, first_node = arrays[10], arrays[11]
     mu, A, node_weight, class_first, grid_start = arrays[14], arrays[15], arrays[16], arrays[17], arrays[18]
-    at, stars, value, by_factor, moved, slopes = space
+    value, by_factor, moved, slopes = more
     by_height, by_dust = 0.0, 0.0
     for s in range(first_line[f], first_line[f + 1]):
         a, b = first_node[s], first_node[s + 1]
-        n = b - a
-        here, found = line_stars(s, v, theta, ln_scale, arrays, at, stars)
-        got, bent = value[:, :n], by_factor[:, :n]
+        found = line_stars(s, v, theta, ln_scale, factor, arrays, space)
+        got, bent = value[: b - a], by_factor[: b - a]
         got[:] = 0.0
         bent[:] = 0.0
         for c in range(class_first.size - 1):
             first, last = class_first[c], class_first[c + 1]
             for e in range(node_weight.size):
                 gather(cotangent, mu[a:b], A[c, e, a:b], factor, node_weight[e], grid_start, first, last, got, bent)
-        by_height += reverse_line(s, v, theta, arrays, here, found, got, moved[:, :n], slopes, g_theta, g_scale)
-        for k in range(found.shape[0]):
-            by_dust += dot(found[k], bent[k])
+        by_height += reverse_line(s, v, theta, arrays, space, b - a, got, moved, slopes, g_theta, g_scale)
+        by_dust += dot(found.ravel(), bent.ravel())
     return by_height, factor * by_dust
 
 
@@ -117,10 +124,10 @@ def project_back(v, W, ln_dust, cotangent, want_W, *arrays):
     """
     n_field, n_y, n_layer = arrays[10].size - 1, int(arrays[18][2]), arrays[0].shape[0]
     theta, ln_scale = layer_numbers(v, arrays)
-    at, stars = work_space(arrays)
-    longest = at.shape[1]
-    space = (at, stars, np.empty((n_layer, longest)), np.empty((n_layer, longest)), np.empty((4, longest)),
-             np.empty((arrays[0].shape[1] + 3) * longest))  # fmt: skip
+    space = work_space(arrays)
+    longest = space[0].shape[1]
+    more = (np.empty((longest, n_layer)), np.empty((longest, n_layer)), np.empty((3, longest)),
+            np.empty((arrays[0].shape[1] + 3) * longest))  # fmt: skip
     g_theta, g_scale, g_W, g_dust = np.zeros(theta.shape), np.zeros(n_layer), np.zeros(W.shape), np.zeros(n_field)
     grid, back = np.empty((BLOCK, n_y, n_layer)), np.empty((BLOCK, n_y, n_layer))
     W_transposed, by_height = np.ascontiguousarray(W.T), 0.0
@@ -132,9 +139,9 @@ def project_back(v, W, ln_dust, cotangent, want_W, *arrays):
             f = start + i
             factor = exp(ln_dust[f])
             if want_W:
-                fill_grid(f, v, theta, ln_scale, factor, arrays, at, stars, grid[i])
+                fill_grid(f, v, theta, ln_scale, factor, arrays, space, grid[i])
             height, g_dust[f] = reverse_field(
-                f, v, theta, ln_scale, factor, arrays, space, back[i], g_theta, g_scale
+                f, v, theta, ln_scale, factor, arrays, space, more, back[i], g_theta, g_scale
             )
             by_height += height
         if want_W:
