@@ -10,9 +10,9 @@ from starcount.compilation import kernel
 
 
 @kernel
-def cumulative_weights(edge, M_start, per_cell, n_cell):
+def place_in_cells(m, cells, n_cell):
     """Where a magnitude falls in the cells: index of the cell and how much of it lies brighter."""
-    p = (edge - M_start) * per_cell
+    p = (m - cells[0]) * cells[1]
     if p <= 0.0:
         return 0, 0.0
     if p >= n_cell:
@@ -29,45 +29,49 @@ def luminosity(lf, y, cells, m_low, m_high, bin_class, response):
     ``bin_class`` (true bin,) what a true bin takes, class -1 for all; ``response`` (true bin, bin) the observation.
     """
     n_layer, n_class, n_cell = lf.shape
-    below = np.zeros((n_class + 1, n_cell + 1))
-    matrix = np.empty((y.size, n_layer, m_low.size))
-    for k in range(n_layer):
-        below[n_class] = 0.0
-        for c in range(n_class):
-            for i in range(n_cell):
-                below[c, i + 1] = below[c, i] + lf[k, c, i]
-                below[n_class, i + 1] += below[c, i + 1]
-        for row in range(y.size):
-            for t in range(m_low.size):
-                run = below[bin_class[t]] if bin_class[t] >= 0 else below[n_class]
-                i, u = cumulative_weights(m_low[t] - y[row], cells[0], cells[1], n_cell)
-                j, w = cumulative_weights(m_high[t] - y[row], cells[0], cells[1], n_cell)
-                matrix[row, k, t] = run[j] + w * (run[j + 1] - run[j]) - run[i] - u * (run[i + 1] - run[i])
-    return np.dot(matrix.reshape(y.size * n_layer, m_low.size), response)
+    below = np.zeros((n_class + 1, n_cell + 1, n_layer))  # the last row: all classes
+    for c in range(n_class):
+        for i in range(n_cell):
+            for k in range(n_layer):
+                below[c, i + 1, k] = below[c, i, k] + lf[k, c, i]
+                below[n_class, i + 1, k] += below[c, i + 1, k]
+    W = np.empty((y.size, n_layer, response.shape[1]))
+    stars = np.empty((m_low.size, n_layer))
+    for row in range(y.size):
+        for t in range(m_low.size):
+            run = below[bin_class[t]] if bin_class[t] >= 0 else below[n_class]
+            i, u = place_in_cells(m_low[t] - y[row], cells, n_cell)
+            j, w = place_in_cells(m_high[t] - y[row], cells, n_cell)
+            a, b, c, d, out = run[i], run[i + 1], run[j], run[j + 1], stars[t]
+            for k in range(n_layer):
+                out[k] = c[k] + w * (d[k] - c[k]) - a[k] - u * (b[k] - a[k])
+        np.dot(stars.T, response, W[row])
+    return W.reshape(y.size * n_layer, response.shape[1])
 
 
 @kernel
 def luminosity_back(g_W, shape, y, cells, m_low, m_high, bin_class, response):
     """Return the transpose of ``luminosity``: like ``lf`` (layer, class, cell), from a cotangent of W."""
     n_layer, n_class, n_cell = shape
-    g_matrix = np.dot(g_W, np.ascontiguousarray(response.T)).reshape(y.size, n_layer, m_low.size)
-    g_lf = np.zeros((n_layer, n_class, n_cell))
-    g_below = np.empty((n_class + 1, n_cell + 1))
+    wanted = g_W.reshape(y.size, n_layer, response.shape[1])
+    g_below, g_stars = np.zeros((n_class + 1, n_cell + 1, n_layer)), np.empty((m_low.size, n_layer))
+    for row in range(y.size):
+        np.dot(response, wanted[row].T, g_stars)
+        for t in range(m_low.size):
+            run = g_below[bin_class[t]] if bin_class[t] >= 0 else g_below[n_class]
+            i, u = place_in_cells(m_low[t] - y[row], cells, n_cell)
+            j, w = place_in_cells(m_high[t] - y[row], cells, n_cell)
+            for k in range(n_layer):
+                g = g_stars[t, k]
+                run[j, k] += (1.0 - w) * g
+                run[j + 1, k] += w * g
+                run[i, k] -= (1.0 - u) * g
+                run[i + 1, k] -= u * g
+    g_lf = np.empty((n_layer, n_class, n_cell))
     for k in range(n_layer):
-        g_below[:] = 0.0
-        for row in range(y.size):
-            for t in range(m_low.size):
-                run = g_below[bin_class[t]] if bin_class[t] >= 0 else g_below[n_class]
-                g = g_matrix[row, k, t]
-                i, u = cumulative_weights(m_low[t] - y[row], cells[0], cells[1], n_cell)
-                j, w = cumulative_weights(m_high[t] - y[row], cells[0], cells[1], n_cell)
-                run[j] += (1.0 - w) * g
-                run[j + 1] += w * g
-                run[i] -= (1.0 - u) * g
-                run[i + 1] -= u * g
         for c in range(n_class):
             total = 0.0
             for i in range(n_cell - 1, -1, -1):
-                total += g_below[c, i + 1] + g_below[n_class, i + 1]
+                total += g_below[c, i + 1, k] + g_below[n_class, i + 1, k]
                 g_lf[k, c, i] = total
     return g_lf
