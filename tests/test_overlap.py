@@ -2,8 +2,10 @@
 
 import time
 
+import astropy.units as u
 import numpy as np
 import pytest
+from astropy_healpix import lonlat_to_healpix
 from numpy.testing import assert_array_equal
 
 from starcount.survey import Survey, circle_fields, make_group, overlapping_fields, pixel_fields
@@ -110,3 +112,35 @@ def test_a_whole_sky_is_fast():
     found = overlapping_fields(both)
     assert time.perf_counter() - start < 10.0
     assert_array_equal(len(found), 3072)
+
+
+@pytest.mark.parametrize(("frame", "order"), [("icrs", "nested"), ("galactic", "ring")])
+def test_a_small_circle_inside_a_pixel(frame, order):
+    """Far from the pixel's centre and border alike, a circle is found by its own centre; outside it is not."""
+    pixel = group(pixel_fields(["p"], 4, [37], frame, order), "p")
+    inside = circle_fields(["c"], *pixel_places(4, np.array([37]), frame, order, 0.5, 0.2), [0.5])
+    outside = circle_fields(["c"], pixel.fields.l_deg + 40.0, pixel.fields.b_deg, [0.5])
+    assert overlapping_fields(survey(pixel, group(inside, "c"))) == [(("p", "p"), ("c", "c"))]
+    assert overlapping_fields(survey(group(inside, "c"), pixel)) == [(("c", "c"), ("p", "p"))]
+    assert overlapping_fields(survey(pixel, group(outside, "c"))) == []
+
+
+@pytest.mark.parametrize("nside", [1, 4, 32])
+def test_pixels_lie_within_their_bounds(nside):
+    """All four corners of all pixels are within ``bound_deg`` of the centre, by which candidates are searched."""
+    pixel = np.arange(12 * nside**2)
+    fields = pixel_fields(pixel.astype(str), nside, pixel, "galactic", "ring")
+    for x in (0.0, 1.0):
+        for y in (0.0, 1.0):
+            corner = pixel_places(nside, pixel, "galactic", "ring", x, y)
+            assert np.all(separation_deg(fields.l_deg, fields.b_deg, *corner) < fields.bound_deg)
+
+
+def test_ring_and_nested_numbers_are_one_sky():
+    """A coarse pixel numbered by rings overlaps the four nested ones whose centres astropy-healpix puts into it."""
+    coarse = group(pixel_fields(["c"], 2, [17], "galactic", "ring"), "coarse")
+    fine = group(pixel_fields(np.arange(192).astype(str), 4, np.arange(192), "galactic", "nested"), "fine")
+    parent = lonlat_to_healpix(fine.fields.l_deg * u.deg, fine.fields.b_deg * u.deg, 2, order="ring")
+    expected = [(("coarse", "c"), ("fine", str(p))) for p in np.flatnonzero(parent == 17)]
+    assert len(expected) == 4
+    assert overlapping_fields(survey(coarse, fine)) == expected

@@ -75,6 +75,16 @@ def test_writing_makes_folders_and_replaces(tmp_path):
     assert os.listdir(path.parent) == ["out.txt"]
 
 
+def test_a_reader_never_sees_half_a_file(tmp_path):
+    """Whoever has the old file open reads the old file to its end: the name moves, the bytes are not overwritten."""
+    path = tmp_path / "out.txt"
+    write_text(path, "old, and longer")
+    with path.open() as reader:
+        write_text(path, "new")
+        assert reader.read() == "old, and longer"
+    assert path.read_text() == "new"
+
+
 def test_text_is_utf8_with_line_feeds(tmp_path):
     """The bytes do not depend on the system."""
     write_text(tmp_path / "t", "h_z ≈ 0.3\n")

@@ -10,6 +10,7 @@ from astropy.table import QTable
 from starcount import steps
 from starcount.cli import main
 from starcount.errors import InputError, UnknownName
+from starcount.report import page
 from starcount.survey import read_survey
 
 DEMO = Path(__file__).parents[1] / "fields" / "demo"
@@ -17,7 +18,9 @@ DEMO = Path(__file__).parents[1] / "fields" / "demo"
 
 @pytest.fixture(autouse=True)
 def in_empty_folder(tmp_path, monkeypatch):
+    """An empty folder, and one figure a page: drawing all of them takes seconds, and other tests look at them."""
     monkeypatch.chdir(tmp_path)
+    monkeypatch.setattr(page, "FIGURES", {"sky": page.FIGURES["sky"]})
 
 
 def test_check_says_what_a_survey_holds():

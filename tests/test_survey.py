@@ -197,3 +197,9 @@ def test_round_trip(tmp_path_factory, survey):
     folder = tmp_path_factory.mktemp("survey")
     write_survey(survey, folder)
     assert differences(survey, read_survey(folder)) == []
+
+
+def test_extinction_may_stay_level(tmp_path):
+    """Behind its last cloud a profile does not rise: equal A_V at growing distances are accepted."""
+    folder = lay_out(tmp_path, profiles=("cloud 0.5 1.2\n", "cloud 0.5 1.2\ncloud 2.0 1.2\n"))
+    assert_array_equal(read_survey(folder).groups[0].profiles["cloud"][1], [0.0, 1.2, 1.2])

@@ -13,6 +13,7 @@ from dataclasses import asdict, dataclass
 import numpy as np
 
 from starcount.inference.mode import Mode
+from starcount.inference.model import CENSUS
 from starcount.inference.predictive import GroupDraws
 
 R_HAT_MOST = 1.01
@@ -96,6 +97,8 @@ def _at_least(name: str, value: float, least: float) -> Check:
 
 def _predictive(group: GroupDraws) -> Check:
     p = group.p_value
+    if group.name == CENSUS:  # the luminosity functions were made from it: it may fit better than chance, never worse
+        return _at_least(f"predictive p of {group.name}", p, P_LEAST)
     return Check(f"predictive p of {group.name}", p, f"{P_LEAST:g} to {1 - P_LEAST:g}", P_LEAST <= p <= 1 - P_LEAST)
 
 

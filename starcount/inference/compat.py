@@ -7,9 +7,16 @@ intervals are always named, because the defaults of the two generations differ.
 from importlib.metadata import PackageNotFoundError, version
 
 import xarray as xr
+from pytensor.compile.mode import Mode
+from pytensor.link.vm import VMLinker
 
-MODE = "NUMBA"
-"""How every function is compiled; PyMC 5 would take its C back end, which cannot call our kernels without Python."""
+MODE = Mode(linker=VMLinker(use_cloop=False, c_thunks=False), optimizer="fast_run").excluding("fusion")
+"""How our functions are built: node by node, with numpy and our own compiled kernels.
+
+The time goes into two or three kernels, so there is nothing to gain from compiling the rest of the graph, and both
+generations do it slowly: the numba back end took minutes over the kernels' many arguments, the C back end needs a compiler.
+Without fusion, which would run composites element by element in Python.
+"""
 
 _STATISTICS = {"depth": "tree_depth", "maxdepth_reached": "reached_max_treedepth", "logp": "lp"}
 _KEPT = ("diverging", "tree_depth", "n_steps", "step_size", "energy", "lp", "reached_max_treedepth")
@@ -37,11 +44,6 @@ def is_finished(running) -> bool:
         return running.is_finished
     except TimeoutError:
         return False
-
-
-def has_nutpie() -> bool:
-    """Whether nutpie is installed; it comes with the package, but not for every platform."""
-    return _version("nutpie") is not None
 
 
 def versions() -> dict[str, str]:

@@ -13,7 +13,6 @@ from dataclasses import dataclass
 
 import numpy as np
 import pymc as pm
-import pytensor.tensor as pt
 from scipy import linalg
 
 from starcount.constants import REFERENCE_WINDOW_MV_MAG
@@ -42,7 +41,8 @@ class Curve:
     def variable(self):
         """Add the curve to the open PyMC model: ``u.curve.NAME`` ~ N(0, 1), ``curve.NAME`` (knot); return the latter."""
         u = pm.Normal(f"u.curve.{self.name}", 0.0, 1.0, shape=self.spread.shape[1])
-        return pm.Deterministic(f"curve.{self.name}", pt.dot(self.spread, u), dims=DIMENSION)
+        # Not a matrix product: over those PyTensor looks for a BLAS of its own and warns that it finds none.
+        return pm.Deterministic(f"curve.{self.name}", (self.spread * u).sum(axis=1), dims=DIMENSION)
 
 
 def hat(M_mag: np.ndarray) -> np.ndarray:

@@ -42,7 +42,7 @@ def fit_galaxy(
     tell("finding the mode", 0.1)
     mode = find_mode(target, seed)
     tell("mapping the posterior", 0.2)
-    q = quadratic_map.build(mode.x, target.jacobian, seed)
+    q = quadratic_map.build(mode.x, target.jacobians, seed)
 
     def sampling(share: float) -> None:
         tell("sampling", _SAMPLING_FROM + share * (_SAMPLING_TO - _SAMPLING_FROM))

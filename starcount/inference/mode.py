@@ -40,7 +40,7 @@ def find_mode(target: Target, seed: int, starts: int = STARTS) -> Mode:
     """Climb from the initial point and from draws around it, and return the best end."""
     rng = np.random.default_rng(seed)
     points = [target.x0, *(target.x0 + _SPREAD * rng.standard_normal((starts - 1, target.size)))]
-    ends = [end for point in points if (end := _climb(target, point)) is not None]
+    ends = [end for end in target.over(_climb, points) if end is not None]
     if not ends:
         raise FailedChecks(f"no mode found: none of {starts} starts converged in {_MOST_STEPS} steps")
     ends.sort(key=lambda end: -end[1])

@@ -132,7 +132,7 @@ def _lf_factor(components: tuple[str, ...]):
     middle = 0.5 * (M_EDGES_MAG[1:] + M_EDGES_MAG[:-1])
     found = curve.curves(components, M_EDGES_MAG)
     weights = _data("curve.weights", curve.hat(middle))
-    rows = [pt.zeros(middle.size), *(pt.dot(weights, c.variable()) for c in found)]
+    rows = [pt.zeros(middle.size), *((weights * c.variable()).sum(axis=1) for c in found)]
     return pt.exp(pt.stack(rows))[curve.owners(found, components)]
 
 

@@ -104,6 +104,8 @@ def draw_figure(name: str, content: PageContent, part: str = "") -> Figure:
     figure = FIGURES[name].draw(content, part)
     words = [FAILED] * content.failed + [INVENTED] * content.prediction.survey.invented
     if words:
+        # A figure with fixed margins keeps no room below for these words; the corner plot's upper right is empty.
+        place = {} if figure.get_layout_engine() else {"y": 0.98, "va": "top"}
         with style():
-            figure.supxlabel("; ".join(words), fontsize=7, color=VERMILION, x=0.995, ha="right")
+            figure.supxlabel("; ".join(words), fontsize=7, color=VERMILION, x=0.985, ha="right", **place)
     return figure

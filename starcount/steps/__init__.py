@@ -112,26 +112,26 @@ def fit(
 
     A fit that fails its checks is written too; then ``FailedChecks`` is raised, unless ``accept_failed``.
     """
-    from starcount.forward import ForwardModel
+    from starcount.forward import ForwardModel, derived_quantities
     from starcount.inference import fit_galaxy
     from starcount.predict import predict_counts
-    from starcount.report import page_content, write_table, write_tables
+    from starcount.report import write_tables
 
     galaxy = galaxy or "default"
     final = folder.run_path(run or f"{record.short_name(survey)}-fit")
     model = ForwardModel(read_survey(survey), read_galaxy(galaxy))
     settings = {"likelihood": likelihood, "draws": draws, "chains": chains, "seed": seed}
-    posterior = fit_galaxy(model, free, lf_curve=curve, census=census, progress=progress, **settings)
+    switches = {"lf_curve": curve, "census": census, "derived": derived_quantities(model.galaxy)}
+    posterior = fit_galaxy(model, free, **switches, **settings, progress=progress)
     prediction = predict_counts(model, posterior=posterior, seed=seed)
-    options = {"galaxy": str(galaxy), "free": list(posterior.names), "curve": curve, "census": census, **settings}
+    fitted = [name for name in posterior.names if name in model.galaxy.parameters]
+    options = {"galaxy": str(galaxy), "free": fitted, "curve": curve, "census": census, **settings}
     with folder.replaced(final) as part:
         inputs = record.keep_inputs(part, model.survey, survey, galaxy)
         result = {**record.of_prediction(prediction), **record.of_posterior(posterior)}
         written = record.write(part, final, "fit", options, inputs, result)
         posterior.save(part / record.POSTERIOR)
-        meta = record.meta(written)
-        write_tables(prediction, part, meta)
-        write_table(page_content("", prediction, {}, posterior).parameter_table, part / "parameters", meta)
+        write_tables(prediction, part, record.meta(written))
     done = Run(final, written, prediction, posterior)
     if not posterior.certified and not accept_failed:
         raise FailedChecks(f"{final}: FAILED CHECKS\n{posterior.verdict}")
