@@ -27,8 +27,8 @@ class Posterior:
     (``curve.NAME``, over ``knot_mag``) and what was derived from them, over (chain, draw); ``prior`` draws of the same
     before the counts were seen; ``sample_stats`` the sampler's own statistics; ``observed_data`` the counts of each
     group (-1: not used); ``posterior_predictive`` quantiles of simulated counts; ``expected`` expected counts and
-    log likelihoods by field for some of the draws; ``diagnostics`` r-hat and effective sizes. The attributes of the root
-    hold seed, priors, verdict, checks and versions.
+    log likelihoods by field for some of the draws; ``diagnostics`` r-hat and effective sizes. The attributes of the
+    root hold seed, priors, verdict, checks and versions.
     """
 
     tree: xr.DataTree

@@ -324,12 +324,20 @@ def test_a_map_that_folds_is_softened():
 # The checks
 
 
+def convergence(r_hat, ess_bulk, ess_tail):
+    """The convergence numbers of two fitted numbers, one of them perfect."""
+    return {
+        "r_hat": np.array([1.0, r_hat]),
+        "ess_bulk": np.array([4000.0, ess_bulk]),
+        "ess_tail": np.array([4000.0, ess_tail]),
+    }
+
+
 def good_fit():
     """The numbers of a fit without fault."""
-    diagnostics = {"r_hat": np.array([1.001, 1.004]), "ess_bulk": np.array([900.0]), "ess_tail": np.array([800.0])}
     ends = np.zeros((4, 2))
     return {
-        "diagnostics": diagnostics,
+        "diagnostics": convergence(1.004, 900.0, 800.0),
         "statistics": {"diverging": type("A", (), {"values": np.zeros((4, 500), bool)})},
         "folded": 0.0,
         "mode": mode.Mode(ends[0], -10.0, 5, ends, np.full(4, -10.0)),
@@ -347,13 +355,13 @@ def test_a_fit_without_fault_passes():
 @pytest.mark.parametrize(
     ("key", "value", "said"),
     [
-        ("diagnostics", {"r_hat": np.array([1.02]), "ess_bulk": np.array([900.0]), "ess_tail": np.array([900.0])}, "r-hat is 1.02"),
-        ("diagnostics", {"r_hat": np.array([1.0]), "ess_bulk": np.array([399.0]), "ess_tail": np.array([900.0])}, "bulk ESS is 399"),
-        ("diagnostics", {"r_hat": np.array([1.0]), "ess_bulk": np.array([900.0]), "ess_tail": np.array([10.0])}, "tail ESS is 10"),
-        ("diagnostics", {"r_hat": np.array([np.nan]), "ess_bulk": np.array([900.0]), "ess_tail": np.array([900.0])}, "r-hat is nan"),
+        ("diagnostics", convergence(1.02, 900.0, 900.0), "r-hat is 1.02"),
+        ("diagnostics", convergence(1.0, 399.0, 900.0), "bulk ESS is 399"),
+        ("diagnostics", convergence(1.0, 900.0, 10.0), "tail ESS is 10"),
+        ("diagnostics", convergence(np.nan, 900.0, 900.0), "r-hat is nan"),
         ("statistics", {"diverging": type("A", (), {"values": np.arange(1000) < 6})}, "divergent draws is 0.006"),
         ("folded", 0.02, "fold is 0.02"),
-        ("mode", mode.Mode(np.zeros(2), -10.0, 5, np.array([[0, 0], [5.0, 0]]), np.array([-10.0, -12.0])), "other modes is 1"),
+        ("mode", mode.Mode(np.zeros(2), -10.0, 5, np.array([[0, 0], [5.0, 0]]), np.array([-10, -12])), "other modes is 1"),
     ],
 )  # fmt: skip
 def test_each_fault_fails_and_is_named(key, value, said):

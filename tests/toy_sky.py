@@ -1,4 +1,4 @@
-"""A small invented sky with the shape of the forward model, for tests of fitting: two exponential layers seen through dust.
+"""A small invented sky with the shape of the forward model, for tests of fitting: two discs seen through dust.
 
 Nothing here is measured. ``v`` is (thin height, thick height, ln thin amplitude, ln thick amplitude); the rows of the
 luminosity matrix are (distance, layer).

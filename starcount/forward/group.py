@@ -20,6 +20,7 @@ ACCURACY = 5e-5
 """Part of a bin by which one more halving of a line's panels may change it."""
 
 _LAST_Y_MAG = 60.0  # beyond any magnitude, however much dust
+_MOST_DUST = 4.0  # the grid in y has room for a fit to raise a field's extinction by this factor
 
 
 @dataclass(frozen=True, eq=False)
@@ -68,28 +69,34 @@ class GroupModel:
 def make_group_model(group: Group, galaxy: Galaxy, accuracy: float = ACCURACY) -> GroupModel:
     """Return a group of fields made ready for a Galaxy. Raises ``UnknownName`` for its band, dust or extra rows."""
     lf = layer_functions(galaxy, group.band)
-    true_edges, response = group.observation.matrix(group.edges_mag)
-    M_range = _occupied(lf)
-    reach = layer_reach(lf, true_edges[0], true_edges[-1])
-    y = y_grid(true_edges, M_range, (MU_FIRST_MAG, _LAST_Y_MAG))
-    lf_arrays = _lf_arrays(y, true_edges[:-1], true_edges[1:], np.full(true_edges.size - 1, -1), response)
-    v, W, table = galaxy.vector(), kernels.luminosity(lf, *lf_arrays), galaxy.layer_table()
+    edges, response = group.observation.matrix(group.edges_mag)
+    reach, M_range = layer_reach(lf, edges[0], edges[-1]), _occupied(lf)
+    v, table = galaxy.vector(), galaxy.layer_table()
+
+    def ready(y_range) -> tuple[np.ndarray, tuple[np.ndarray, ...]]:
+        y = y_grid(edges, M_range, y_range)
+        return y, _lf_arrays(y, edges[:-1], edges[1:], np.full(edges.size - 1, -1), response)
+
+    y, lf_arrays = ready((MU_FIRST_MAG, _LAST_Y_MAG))
+    W = kernels.luminosity(lf, *lf_arrays)
 
     def count(lines: Lines) -> np.ndarray:
         return make_projection(table, galaxy.R0_kpc, lines, y, reach).counts(v, W)
 
     lines = group_lines(group, galaxy, count, (reach[:, 0].min(), reach[:, 1].max()), accuracy)
-    rows = extra_rows(group.extra, group.band, group.edges_mag) if group.extra else np.zeros((0, group.edges_mag.size - 1))
+    y_needed, lf_arrays = ready((lines.mu_mag.min(), (lines.mu_mag + _MOST_DUST * lines.A_mag).max()))
+    names = tuple(group.extra)
+    rows = extra_rows(names, group.band, group.edges_mag)
     return GroupModel(
         name=group.name,
         group=group,
         galaxy=galaxy,
         counts=group.counts,
         used=group.used,
-        projection=make_projection(table, galaxy.R0_kpc, lines, y, reach),
+        projection=make_projection(table, galaxy.R0_kpc, lines, y_needed, reach),
         lf=lf,
         lf_arrays=lf_arrays,
-        extra_names=tuple(group.extra),
+        extra_names=names,
         extra=rows[:, None, :] * group.fields.area_deg2[None, :, None],
     )
 

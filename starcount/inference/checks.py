@@ -69,9 +69,9 @@ class Verdict:
 def judge(diagnostics, statistics, folded: float, mode: Mode, curvature: np.ndarray, groups, shrinkage) -> Verdict:
     """Weigh a fit.
 
-    ``diagnostics`` has r_hat, ess_bulk and ess_tail by fitted number, ``statistics`` the sampler's, ``folded`` the share
-    of draws beyond a fold, ``curvature`` (p, p) the information at the mode, ``groups`` the predictive draws and
-    ``shrinkage`` the posterior's width over the prior's by parameter.
+    ``diagnostics`` has r_hat, ess_bulk and ess_tail by fitted number, ``statistics`` the sampler's own; ``folded`` is
+    the share of draws beyond a fold, ``curvature`` (p, p) the information at the mode, ``groups`` the predictive draws
+    and ``shrinkage`` the posterior's width over the prior's by parameter.
     """
     worst = {key: diagnostics[key].max() if key == "r_hat" else diagnostics[key].min() for key in diagnostics}
     divergent = float(np.mean(statistics["diverging"].values))

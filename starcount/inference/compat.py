@@ -1,22 +1,12 @@
 """Every difference between PyMC 5.28 with ArviZ 0.23 (Python 3.11) and PyMC 6 with ArviZ 1 (later Pythons).
 
-Of ArviZ only ``rhat`` and ``ess`` are called, and only with a Dataset: there both generations agree. Modes, samplers and
-intervals are always named, because the defaults of the two generations differ.
+Of ArviZ only ``rhat`` and ``ess`` are called, and only with a Dataset: there both generations agree. Modes, samplers
+and intervals are always named, because the defaults of the two generations differ.
 """
 
 from importlib.metadata import PackageNotFoundError, version
 
 import xarray as xr
-from pytensor.compile.mode import Mode
-from pytensor.link.vm import VMLinker
-
-MODE = Mode(linker=VMLinker(use_cloop=False, c_thunks=False), optimizer="fast_run").excluding("fusion")
-"""How our functions are built: node by node, with numpy and our own compiled kernels.
-
-The time goes into two or three kernels, so there is nothing to gain from compiling the rest of the graph, and both
-generations do it slowly: the numba back end took minutes over the kernels' many arguments, the C back end needs a compiler.
-Without fusion, which would run composites element by element in Python.
-"""
 
 _STATISTICS = {"depth": "tree_depth", "maxdepth_reached": "reached_max_treedepth", "logp": "lp"}
 _KEPT = ("diverging", "tree_depth", "n_steps", "step_size", "energy", "lp", "reached_max_treedepth")

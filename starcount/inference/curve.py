@@ -39,7 +39,7 @@ class Curve:
     spread: np.ndarray
 
     def variable(self):
-        """Add the curve to the open PyMC model: ``u.curve.NAME`` ~ N(0, 1), ``curve.NAME`` (knot); return the latter."""
+        """Add ``u.curve.NAME`` ~ N(0, 1) and ``curve.NAME`` (knot) to the open PyMC model; return the latter."""
         u = pm.Normal(f"u.curve.{self.name}", 0.0, 1.0, shape=self.spread.shape[1])
         # Not a matrix product: over those PyTensor looks for a BLAS of its own and warns that it finds none.
         return pm.Deterministic(f"curve.{self.name}", (self.spread * u).sum(axis=1), dims=DIMENSION)

@@ -111,8 +111,8 @@ def _with_stars(group):
     if len(impossible):
         field, one = impossible[0]
         raise InputError(
-            f"group {group.name!r}: {group.counts[field, one]} stars in field {field}, bin {one}, where the model expects "
-            f"none (and {len(impossible) - 1} more such bins); leave these bins out of the counts"
+            f"group {group.name!r}: {group.counts[field, one]} stars in field {field}, bin {one}, where the model "
+            f"expects none (and {len(impossible) - 1} more such bins); leave these bins out of the counts"
         )
     return replace(group, used=group.used & ~none)
 

@@ -2,8 +2,8 @@
 
 The operations hold no arrays: geometry enters as inputs, so that one compiled function serves every survey and nothing
 large is frozen into it. They hold no state and write only to arrays they allocate, so that chains may run as threads.
-``digest`` names the source of the kernels; it is part of the key under which PyTensor caches compiled code, because that
-key does not know the code of a kernel: without it an edited kernel returns the old numbers.
+``digest`` names the source of the kernels; it is part of the key under which PyTensor caches compiled code, because
+that key does not know the code of a kernel: without it an edited kernel returns the old numbers.
 """
 
 from hashlib import sha256

@@ -1,13 +1,13 @@
 """A quadratic change of variables that straightens the posterior's curved ridge.
 
-With J the Jacobian whose J^T J is the expected information plus the prior's, m the mode, L L^T = (J^T J)^-1 and Q = J L,
+With J the Jacobian whose J^T J is the expected information plus the prior's, m the mode, L L^T = (J^T J)^-1, Q = J L,
 
     S_abc = Q_a . [J(m + L_c) - J(m - L_c)] L_b / 2, made symmetric in b and c,
     x(z)  = m + L (z - S(z, z) / 2),      |dx/dz| = |L| det(1 - S z).
 
-S is the parameter-effects curvature of Bates & Watts (1980): the part of a model's curvature that other parameters would
-not have. In z the posterior is close to a standard normal. The map is exact as a change of variables whatever S is; a
-poor S costs speed, not truth.
+S is the parameter-effects curvature of Bates & Watts (1980): the part of a model's curvature that other parameters
+would not have. In z the posterior is close to a standard normal. The map is exact as a change of variables whatever S
+is; a poor S costs speed, not truth.
 """
 
 from collections.abc import Callable
@@ -48,7 +48,7 @@ class QuadraticMap:
 
 
 def build(m: np.ndarray, jacobians: Callable[[list[np.ndarray]], list[np.ndarray]], seed: int) -> QuadraticMap:
-    """Build the map at the mode ``m``; ``jacobians`` returns J (row, p) at each of some points. Costs 2 p + 1 of them."""
+    """Build the map at the mode ``m``; ``jacobians`` returns J (row, p) at each of some points. Costs 2 p + 1."""
     (J,) = jacobians([m])
     L = linalg.cholesky(linalg.inv(J.T @ J), lower=True)
     Q = J @ L

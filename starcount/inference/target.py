@@ -19,11 +19,12 @@ import pytensor.tensor as pt
 from scipy import linalg
 
 from starcount.errors import InputError
-from starcount.inference import compat, likelihoods
+from starcount.inference import likelihoods
+from starcount.inference.plain_mode import PLAIN_MODE
 
 STEP = 1e-5
-"""The step of differences, in standard deviations of the prior: expected counts change to 1e-5 of their slope's own size,
-far finer than a map or a scoring step needs."""
+"""The step of differences, in standard deviations of the prior: slopes are right to about 1e-5, far finer than a map or
+a scoring step needs."""
 
 _FLATTEST = 1e-6
 """The least curvature a prior is given, so that a flat or double-peaked one still leaves a finite step."""
@@ -65,15 +66,15 @@ class Target:
         expected = model.replace_rvs_by_values([*means, *spreads])
         pulled = sum((pt.sum(pull * one) for pull, one in zip(pulls, expected, strict=True)), pt.constant(0.0))
         self._means = self._function(point, expected)
-        self._pull_back = self._function(point, [pulled], pulls, gradient=True)
+        self._pull_back = self._function(point, [pulled], pulls, gradient=True, value=False)
         self._rest = self._function(point, [rest], gradient=True)
         self._named = self._function(point, model.replace_rvs_by_values(named))
 
-    def _function(self, point, outputs, more_inputs=(), gradient=False):
+    def _function(self, point, outputs, more_inputs=(), gradient=False, value=True):
         outputs, x = pm.pytensorf.join_nonshared_inputs(point, outputs, self.model.value_vars)
         if gradient:
-            outputs = [*outputs, pytensor.grad(outputs[0], x)]
-        return pytensor.function([x, *more_inputs], outputs, mode=compat.MODE, on_unused_input="ignore")
+            outputs = [*outputs[: int(value)], pytensor.grad(outputs[0], x)]
+        return pytensor.function([x, *more_inputs], outputs, mode=PLAIN_MODE, on_unused_input="ignore")
 
     def copy(self) -> "Target":
         """Return the target with functions of its own: a compiled function holds state, so threads must not share one.
@@ -125,7 +126,7 @@ class Target:
         means, spreads = self.means(x)
         terms = [_terms(*one) for one in zip(self.counts, self.observed, means, spreads, strict=True)]
         by_spread = [one[3] / spread if spread > 0 else 0.0 for one, spread in zip(terms, spreads, strict=True)]
-        _, pulled = self._pull_back(x, *(one[1] for one in terms), *by_spread)
+        (pulled,) = self._pull_back(x, *(one[1] for one in terms), *by_spread)
         return float(value) + sum(one[0] for one in terms), gradient + pulled
 
     def means(self, x: np.ndarray) -> tuple[list[np.ndarray], list[float]]:

@@ -173,8 +173,7 @@ def _attributes(fit: Fit, posterior: xr.Dataset, derived: tuple[str, ...]) -> di
     with_floor = [name for name in fit.groups if f"floor.{name}" in posterior]
     fitted = (*model.choose(fit.galaxy, fit.parameters), *(model.floor_of(name) for name in with_floor))
     table = prior_table(fitted)
-    rows = [{key: value if isinstance(value, str) else float(value) for key, value in zip(table.colnames, row, strict=True)}
-            for row in table.iterrows()]  # fmt: skip
+    rows = [{name: column.tolist()[i] for name, column in table.columns.items()} for i in range(len(table))]
     components = tuple(component.name for component, _ in fit.galaxy.layers)
     used_curves = curve.curves(components, model.M_EDGES_MAG) if fit.lf_curve else ()
     return {

@@ -103,11 +103,17 @@ class Observation:
 
     def _width(self, lo: float, hi: float) -> float:
         if self.error is None:
-            return WIDEST_MAG
+            return hi - lo if self._is_constant(lo, hi) else WIDEST_MAG
         _, scatter = self.error.at(np.linspace(lo, hi, 9))
         # Without any scatter the bins are only shifted, which needs no fine steps.
         finest = scatter[scatter > 0.0].min(initial=np.inf) / 2.0
         return float(np.clip(finest, FINEST_MAG, WIDEST_MAG))
+
+    def _is_constant(self, lo: float, hi: float) -> bool:
+        """Whether the completeness is the same all over a bin: then the bin need not be divided."""
+        inside = (self.completeness.m_mag > lo) & (self.completeness.m_mag < hi)
+        shares = np.append(np.interp([lo, hi], self.completeness.m_mag, self.completeness.share), self.completeness.share[inside])
+        return bool(np.ptp(shares) == 0.0)
 
     def _landed(self, true_mag: np.ndarray, edges_mag: np.ndarray) -> np.ndarray:
         """Probability (true, bin) that a star of a true bin is catalogued in a bin."""

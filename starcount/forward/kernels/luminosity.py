@@ -35,38 +35,38 @@ def luminosity(lf, y, cells, m_low, m_high, bin_class, response):
             for k in range(n_layer):
                 below[c, i + 1, k] = below[c, i, k] + lf[k, c, i]
                 below[n_class, i + 1, k] += below[c, i + 1, k]
-    W = np.empty((y.size, n_layer, response.shape[1]))
-    stars = np.empty((m_low.size, n_layer))
+    stars = np.empty((y.size, n_layer, m_low.size))
     for row in range(y.size):
+        out = stars[row]
         for t in range(m_low.size):
             run = below[bin_class[t]] if bin_class[t] >= 0 else below[n_class]
             i, u = place_in_cells(m_low[t] - y[row], cells, n_cell)
             j, w = place_in_cells(m_high[t] - y[row], cells, n_cell)
-            a, b, c, d, out = run[i], run[i + 1], run[j], run[j + 1], stars[t]
+            a, b, c, d = run[i], run[i + 1], run[j], run[j + 1]
             for k in range(n_layer):
-                out[k] = c[k] + w * (d[k] - c[k]) - a[k] - u * (b[k] - a[k])
-        np.dot(stars.T, response, W[row])
-    return W.reshape(y.size * n_layer, response.shape[1])
+                out[k, t] = c[k] + w * (d[k] - c[k]) - a[k] - u * (b[k] - a[k])
+    return np.dot(stars.reshape(y.size * n_layer, m_low.size), response)
 
 
 @kernel
 def luminosity_back(g_W, shape, y, cells, m_low, m_high, bin_class, response):
     """Return the transpose of ``luminosity``: like ``lf`` (layer, class, cell), from a cotangent of W."""
     n_layer, n_class, n_cell = shape
-    wanted = g_W.reshape(y.size, n_layer, response.shape[1])
-    g_below, g_stars = np.zeros((n_class + 1, n_cell + 1, n_layer)), np.empty((m_low.size, n_layer))
+    g_stars = np.dot(g_W, np.ascontiguousarray(response.T)).reshape(y.size, n_layer, m_low.size)
+    g_below = np.zeros((n_class + 1, n_cell + 1, n_layer))
     for row in range(y.size):
-        np.dot(response, wanted[row].T, g_stars)
+        here = g_stars[row]
         for t in range(m_low.size):
             run = g_below[bin_class[t]] if bin_class[t] >= 0 else g_below[n_class]
             i, u = place_in_cells(m_low[t] - y[row], cells, n_cell)
             j, w = place_in_cells(m_high[t] - y[row], cells, n_cell)
+            a, b, c, d = run[i], run[i + 1], run[j], run[j + 1]
             for k in range(n_layer):
-                g = g_stars[t, k]
-                run[j, k] += (1.0 - w) * g
-                run[j + 1, k] += w * g
-                run[i, k] -= (1.0 - u) * g
-                run[i + 1, k] -= u * g
+                g = here[k, t]
+                c[k] += (1.0 - w) * g
+                d[k] += w * g
+                a[k] -= (1.0 - u) * g
+                b[k] -= u * g
     g_lf = np.empty((n_layer, n_class, n_cell))
     for k in range(n_layer):
         for c in range(n_class):

@@ -1,6 +1,6 @@
-"""How counts scatter around what is expected. To add a likelihood: write its file, import it here, add it to LIKELIHOODS.
+"""How counts scatter around what is expected.
 
-Each file holds the PyMC expression (``observe``) and the compiled terms of the same likelihood (``terms``).
+To add a likelihood: write its file, import it here, add it to LIKELIHOODS. Each file holds the PyMC expression (``observe``) and the compiled terms of the same likelihood (``terms``).
 """
 
 from types import ModuleType
