@@ -1,6 +1,7 @@
 """Small surveys and Galaxies that several tests share."""
 
 import numpy as np
+
 from starcount.galaxy import LAWS, Component, Galaxy, Layer, Parameter
 from starcount.survey import Survey
 from starcount.survey.fields import circle_fields
@@ -15,7 +16,9 @@ def circles(l_deg, b_deg, radius_deg=0.5, **columns):
 
 def survey(fields, edges_mag, band="V", **more) -> Survey:
     """A survey of one group."""
-    return Survey(name="test", description="", invented=True, groups=(make_group("g", band, edges_mag, fields, **more),))
+    return Survey(
+        name="test", description="", invented=True, groups=(make_group("g", band, edges_mag, fields, **more),)
+    )
 
 
 def galaxy(law: str, theta, amplitude="density", value=1.0, z0_kpc=0.0208, population="halo") -> Galaxy:

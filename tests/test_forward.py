@@ -10,6 +10,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from numpy.testing import assert_allclose
 from scipy.integrate import quad
+
 from starcount import stars
 from starcount.dust import band_coefficient
 from starcount.forward import ForwardModel, census_density_pc3, derived_quantities, layer_functions, sphere_means
@@ -37,13 +38,15 @@ def sky(default):
 
 @pytest.mark.parametrize(("l", "b"), [(0, 90), (0, -30), (40, 10), (180, -25), (320, -4), (100, 2)])
 @pytest.mark.parametrize("band", ["G", "V"])
-def test_the_twin_agrees(default, l, b, band):  # noqa: E741
+def test_the_twin_agrees(default, l, b, band):
     """Adaptive quadrature with laws, frame and dust written independently: 1e-4, twice what a line is settled to."""
     fields = skies.circles(l, b, 0.05)
     edges = np.array([7.0, 8.0, 12.0, 12.5, 18.0, 18.5, 20.0])
     group = ForwardModel(skies.survey(fields, edges, band), default).groups[0]
     found = group.expected()[0]
-    wanted = twin.expected(default, group.lf, stars.M_EDGES_MAG, l, b, fields.area_deg2[0], edges, band_coefficient(band))
+    wanted = twin.expected(
+        default, group.lf, stars.M_EDGES_MAG, l, b, fields.area_deg2[0], edges, band_coefficient(band)
+    )
     assert_allclose(found, wanted, rtol=1e-4)
 
 
@@ -102,7 +105,7 @@ def test_panels_meet_the_kinks():
 
 
 def test_where_the_galaxy_ends(default, monkeypatch):
-    """A halo that went on as a power law to 1000 kpc would add less than 1 % at 20 < G < 21, at the pole and at b = 40."""
+    """A halo that went on as a power law to 1000 kpc adds less than 1 % at 20 < G < 21, at the pole and at b = 40."""
     fields = skies.circles([0, 0], [90, 40], 0.1)
     make = lambda: ForwardModel(skies.survey(fields, np.array([20.0, 21.0]), "G"), default).groups[0].expected()  # noqa: E731
     ends = make()
@@ -125,12 +128,16 @@ def test_every_gradient(sky):
     def value(v=v, dust=dust, W=W):
         return np.vdot(cotangent, group.projection.counts(v, W, dust))
 
-    settings_at = [i for i, p in enumerate(p for c in group.galaxy.components for p in c.law.parameters) if p.neutral is not None]
+    settings_at = [
+        i for i, p in enumerate(p for c in group.galaxy.components for p in c.law.parameters) if p.neutral is not None
+    ]
     for i in range(v.size):
         if i in settings_at and v[i] in (0.0, 1.0, 1000.0):
             continue  # at the neutral end of the support there is no central difference
         step = 1e-5 * max(abs(v[i]), 0.02) * np.eye(v.size)[i]
-        assert_allclose(gv[i], (value(v=v + step) - value(v=v - step)) / (2 * step[i]), rtol=2e-6, atol=1e-7, err_msg=str(i))
+        assert_allclose(
+            gv[i], (value(v=v + step) - value(v=v - step)) / (2 * step[i]), rtol=2e-6, atol=1e-7, err_msg=str(i)
+        )
     for f in range(dust.size):
         step = 1e-5 * np.eye(dust.size)[f]
         assert_allclose(g_dust[f], (value(dust=dust + step) - value(dust=dust - step)) / 2e-5, rtol=2e-6, atol=1e-8)
@@ -171,7 +178,9 @@ def test_the_luminosity_matrix_and_its_transpose(seed):
     arrays = (np.linspace(0, 12, 7), np.array([-8.0, 20.0]), low, low + rng.uniform(0.1, 5, n_bin),
               rng.integers(-1, 3, n_bin), rng.normal(size=(n_bin, 4)))  # fmt: skip
     lf, g = rng.normal(size=(2, 3, 600)), rng.normal(size=(14, 4))
-    assert_allclose(np.vdot(luminosity(lf, *arrays), g), np.vdot(lf, luminosity_back(g, lf.shape, *arrays)), rtol=1e-9, atol=1e-9)
+    assert_allclose(
+        np.vdot(luminosity(lf, *arrays), g), np.vdot(lf, luminosity_back(g, lf.shape, *arrays)), rtol=1e-9, atol=1e-9
+    )
 
 
 def test_the_luminosity_matrix_against_its_plain_twin(default):
@@ -188,7 +197,7 @@ def test_the_luminosity_matrix_against_its_plain_twin(default):
 
 
 def test_counts_scale_and_add(sky, default):
-    """Half the area halves, merged bins add, parts sum to the whole; more dust never adds stars brighter than a limit."""
+    """Half the area halves, merged bins add, parts sum to the whole; more dust never adds to stars brighter than m."""
     whole = sky.groups[0].expected()
     assert_allclose(sum(sky.groups[0].expected(parts=True).values()), whole, rtol=1e-12)
     fields = sky.survey.groups[0].fields
@@ -230,7 +239,11 @@ def test_sphere_means_against_brute_force(default):
     rng = np.random.default_rng(3)
     p = rng.normal(size=(100_000, 3))
     p *= (0.1 * rng.random(100_000) ** (1 / 3) / np.linalg.norm(p, axis=1))[:, None]
-    l, b, d = np.degrees(np.arctan2(p[:, 1], p[:, 0])), np.degrees(np.arcsin(p[:, 2] / np.linalg.norm(p, axis=1))), np.linalg.norm(p, axis=1)  # noqa: E741, E501
+    l, b, d = (
+        np.degrees(np.arctan2(p[:, 1], p[:, 0])),
+        np.degrees(np.arcsin(p[:, 2] / np.linalg.norm(p, axis=1))),
+        np.linalg.norm(p, axis=1),
+    )
     place = default.place(l, b, d)
     means = sphere_means(default, np.array([100.0]))[:, 0]
     for row in np.flatnonzero([c.anchor == "sun" for c, _ in default.layers]):
@@ -238,7 +251,7 @@ def test_sphere_means_against_brute_force(default):
 
 
 def test_one_reference_window_for_both_bands(default):
-    """The Galaxy's census density is what the V census holds in the window; thin, thick and halo have one star there."""
+    """The Galaxy's census density is what the V census holds in the window; thin, thick, halo have one star there."""
     assert_allclose(default.values["census.density_pc3"], census_density_pc3(default), rtol=0.01)
     lf = layer_functions(default, "V")
     for name in ("thin", "thick", "halo"):
@@ -266,7 +279,7 @@ def test_derived_quantities_of_one_disc():
 
 
 def test_derived_quantities_of_the_default(default):
-    """Surface ratio share x h_thick / h_thin, 0.12 x 0.85 / 0.30 within the layers' share, as Juric et al. 2008: 0.36."""
+    """Surface ratio share x h_thick / h_thin, 0.12 x 0.85 / 0.30 at the Sun; Juric et al. 2008 have 0.36."""
     found = derived_quantities(default)({})
     sun = np.exp(0.0208 / 0.85 - 0.0208 / 0.30)  # amplitudes are defined at the Sun, not in the plane
     assert_allclose(found["thick.surface_ratio"], 0.12 * 0.85 / 0.30 * sun, rtol=0.01)

@@ -5,6 +5,7 @@ import pytest
 import twin
 from numpy.testing import assert_allclose
 from scipy.integrate import dblquad, quad
+
 from starcount.errors import Problems, UnknownName
 from starcount.galaxy import LAWS, law, published_names, read_galaxy
 from starcount.galaxy.frame import galactocentric
@@ -71,7 +72,7 @@ def test_disc_values(scales):
 
 
 def test_halo_values():
-    """Power law 2.77, q 0.64, with a core of 1 kpc (Juric et al. 2008's shape): four printed digits of the same sheet."""
+    """Power law 2.77, q 0.64, with a core of 1 kpc (Juric et al. 2008's shape): four printed digits."""
     at = np.array([(R0, 1), (R0, 5), (R0, 10), (4, 3), (15, 0), (0.1, 8.178), (20, 20)]).T
     expected = [0.9523, 0.4113, 0.1209, 2.157, 0.1890, 0.2940, 0.01546]
     assert_allclose(relative("halo", [2.77, 0.64, 1.0], *at), expected, rtol=4e-4)
@@ -89,7 +90,9 @@ def test_the_bars_near_end_is_at_positive_longitude():
 def test_columns_through_the_disc(vertical, column):
     """Sigma / (n(0) h_z) = 4, pi, 2 for sech^2, sech and exponential: closed forms."""
     theta = [2.6, 0.3, 0.0, 1000.0, 1.0, vertical]
-    found = 2 * quad(lambda z: float(np.exp(law("disc")(theta, R0, 0.0, z) - law("disc")(theta, R0, 0.0, 0.0))), 0, 20)[0]
+    found = (
+        2 * quad(lambda z: float(np.exp(law("disc")(theta, R0, 0.0, z) - law("disc")(theta, R0, 0.0, 0.0))), 0, 20)[0]
+    )
     assert_allclose(found / 0.3, column, rtol=1e-7)
 
 
@@ -104,12 +107,16 @@ def test_the_bars_total():
 
 
 def test_the_frame_is_astropys():
-    """Independent of our signs. 5e-5 kpc: the direction of the centre in astropy is rounded, 2e-6 rad at up to 20 kpc."""
+    """Independent of our signs. 5e-5 kpc: astropy's direction of the centre is rounded, 2e-6 rad at 20 kpc."""
     rng = np.random.default_rng(1)
     l, b, d = rng.uniform(0, 360, 50), rng.uniform(-90, 90, 50), rng.uniform(0.1, 20, 50)
     R, phi, z = galactocentric(l, b, d, R0, Z0)
-    assert_allclose((R, phi, z), np.array([twin.tilted(*row, R0, Z0) for row in zip(l, b, d)]).T, atol=1e-12)
-    R2, phi2, z2 = (np.array(x) for x in zip(*(twin.galactocentric(*row, R0, Z0) for row in zip(l, b, d))))
+    assert_allclose(
+        (R, phi, z), np.array([twin.tilted(*row, R0, Z0) for row in zip(l, b, d, strict=True)]).T, atol=1e-12
+    )
+    R2, phi2, z2 = (
+        np.array(x) for x in zip(*(twin.galactocentric(*row, R0, Z0) for row in zip(l, b, d, strict=True)), strict=True)
+    )
     assert_allclose(R, R2[:, 0], atol=5e-5)
     assert_allclose(z, z2[:, 0], atol=5e-5)
     assert_allclose(R * np.sin(phi), (R2 * np.sin(phi2))[:, 0], atol=5e-5)
@@ -122,10 +129,18 @@ def test_azimuth_grows_with_rotation():
 
 
 def test_the_default_components_at_printed_places():
-    """Sum of thin (2.6, 0.30), thick (2.5, 0.85, share 0.09) and halo (2.75, 0.65, 0.5, share 0.002): worked by hand."""
+    """Sum of thin (2.6, 0.30), thick (2.5, 0.85, share 0.09) and halo (2.75, 0.65, 0.5, share 0.002), by hand."""
     thin, thick, halo = [2.6, 0.3, 0, 1000, 1, 0], [2.5, 0.85, 0, 1000, 1, 0], [2.75, 0.65, 0.5]
-    for R, z, total in [(R0, 0.5, 0.25563), (R0, 2.0, 0.011802), (5, 0.5, 0.87729), (12, 0.5, 0.058343), (15, 5, 2.915e-4)]:
-        found = relative("disc", thin, R, z) + 0.09 * relative("disc", thick, R, z) + 0.002 * relative("halo", halo, R, z)
+    for R, z, total in [
+        (R0, 0.5, 0.25563),
+        (R0, 2.0, 0.011802),
+        (5, 0.5, 0.87729),
+        (12, 0.5, 0.058343),
+        (15, 5, 2.915e-4),
+    ]:
+        found = (
+            relative("disc", thin, R, z) + 0.09 * relative("disc", thick, R, z) + 0.002 * relative("halo", halo, R, z)
+        )
         assert_allclose(found, total, rtol=2e-4)
 
 
@@ -143,7 +158,16 @@ def test_published_galaxies_are_complete(name):
 def test_published_values():
     """Chang et al. 2011 and Juric et al. 2008 as printed in their abstracts."""
     chang, juric = read_galaxy("chang-2011").values, read_galaxy("juric-2008").values
-    names = ("thin.h_R_kpc", "thin.h_z_kpc", "thick.h_R_kpc", "thick.h_z_kpc", "thick.share", "halo.gamma", "halo.q", "halo.share")
+    names = (
+        "thin.h_R_kpc",
+        "thin.h_z_kpc",
+        "thick.h_R_kpc",
+        "thick.h_z_kpc",
+        "thick.share",
+        "halo.gamma",
+        "halo.q",
+        "halo.share",
+    )
     assert [chang[n] for n in names] == [3.7, 0.36, 5.0, 1.02, 0.07, 2.6, 0.55, 0.002]
     assert [juric[n] for n in names] == [2.6, 0.30, 3.6, 0.90, 0.12, 2.8, 0.64, 0.005]
 
@@ -160,7 +184,12 @@ def test_a_wrong_galaxy_names_everything_that_is_wrong(tmp_path):
         read_galaxy(path)
     lines = str(caught.value).splitlines()
     assert all(line.startswith(f"{path}: ") for line in lines)
-    for piece in ("thin.h_R_kpc.value: -2.6", "'hallo'; expected one of", "RO_kpc: an unknown key; expected 'R0_kpc'", "alpha_deg.value: nan"):
+    for piece in (
+        "thin.h_R_kpc.value: -2.6",
+        "'hallo'; expected one of",
+        "RO_kpc: an unknown key; expected 'R0_kpc'",
+        "alpha_deg.value: nan",
+    ):
         assert any(piece in line for line in lines), (piece, lines)
 
 

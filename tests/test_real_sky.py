@@ -10,8 +10,9 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from observed_sky import OBSERVED_VARIABLE, write_gaia_parquet
 from numpy.testing import assert_allclose
+from observed_sky import OBSERVED_VARIABLE, write_gaia_parquet
+
 from starcount import steps
 from starcount.forward import ForwardModel
 from starcount.galaxy import read_galaxy

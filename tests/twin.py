@@ -4,6 +4,8 @@ It shares with the package the input tables (luminosity functions, parameter val
 from astropy's Galactocentric frame, laws and the dust disc are written out again.
 """
 
+from itertools import pairwise
+
 import astropy.units as u
 import numpy as np
 from astropy.coordinates import Galactic, Galactocentric
@@ -102,5 +104,5 @@ def expected(galaxy, lf, M_edges_mag, l_deg, b_deg, area_deg2, edges_mag, A_per_
     kink = galaxy.R0_kpc * np.cos(np.radians(l_deg)) / np.cos(np.radians(b_deg))
     if 0 < kink < D_MAX_KPC:
         edges = np.sort(np.append(edges, 5 * np.log10(kink) + 10))
-    total = sum(quad_vec(per_mu, a, b, epsrel=1e-6, norm="max", limit=200)[0] for a, b in zip(edges[:-1], edges[1:]))
+    total = sum(quad_vec(per_mu, a, b, epsrel=1e-6, norm="max", limit=200)[0] for a, b in pairwise(edges))
     return area_deg2 * (np.pi / 180) ** 2 * total

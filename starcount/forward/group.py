@@ -135,7 +135,9 @@ def make_census_model(galaxy: Galaxy, band: str) -> GroupModel:
     census = stars.census(band)
     radii, field = np.unique(census.radius_pc, return_inverse=True)
     points = [sphere_points(r, galaxy.values["sun.z0_kpc"]) for r in radii]
-    X, Z, weight = (np.concatenate(column) for column in zip(*((p.X_kpc, p.Z_kpc, p.weight) for p in points)))
+    X, Z, weight = (
+        np.concatenate(column) for column in zip(*((p.X_kpc, p.Z_kpc, p.weight) for p in points), strict=True)
+    )
     d = np.hypot(X, Z)
     first = np.concatenate([[0], np.cumsum([p.weight.size for p in points])])
     lines = Lines(
@@ -158,7 +160,9 @@ def make_census_model(galaxy: Galaxy, band: str) -> GroupModel:
         galaxy=galaxy,
         counts=np.where(used, census.n, 0),
         used=used,
-        projection=make_projection(galaxy.layer_table(), galaxy.R0_kpc, lines, y, np.tile([-1.0, 1.0], (len(galaxy.layers), 1))),
+        projection=make_projection(
+            galaxy.layer_table(), galaxy.R0_kpc, lines, y, np.tile([-1.0, 1.0], (len(galaxy.layers), 1))
+        ),
         lf=layer_functions(galaxy, band),
         lf_arrays=_lf_arrays(y, census.M_lo, census.M_hi, census.class_index.astype(np.int64), response),
         extra_names=(),

@@ -8,6 +8,7 @@ laws of its own layers.
 
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
+from itertools import pairwise
 from pathlib import Path
 
 import numpy as np
@@ -39,8 +40,8 @@ def sphere_points(radius_pc: float, z0_kpc: float) -> SpherePoints:
     r = radius_pc / 1e3
     limits = np.unique(np.clip([-r, -z0_kpc, r], -r, r))
     at, weight = np.polynomial.legendre.leggauss(12)
-    Z = np.concatenate([(a + b) / 2 + (b - a) / 2 * at for a, b in zip(limits[:-1], limits[1:], strict=True)])
-    w = np.concatenate([(b - a) / 2 * weight for a, b in zip(limits[:-1], limits[1:], strict=True)])
+    Z = np.concatenate([(a + b) / 2 + (b - a) / 2 * at for a, b in pairwise(limits)])
+    w = np.concatenate([(b - a) / 2 * weight for a, b in pairwise(limits)])
     slab = r**2 - Z**2
     return SpherePoints(
         X_kpc=np.concatenate([-np.sqrt(slab) / 2, np.sqrt(slab) / 2]),
@@ -121,4 +122,3 @@ def _shares(component: Component) -> np.ndarray:
 def _rows(galaxy: Galaxy, component: Component) -> slice:
     owners = [c is component for c, _ in galaxy.layers]
     return slice(owners.index(True), owners.index(True) + sum(owners))
-

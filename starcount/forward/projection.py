@@ -36,8 +36,8 @@ class Projection:
 
     ``arrays``: index, scale, n_parameter, amplitude, anchor and the three addresses of ``LayerTable``; R0; then
     direction, first_line, first_node, d_kpc, volume, mu, A and node_weight of ``Lines``; class_first (the first layer
-    of each star class, and the end); the grid's first y, steps per mag and length; and the shifts (layer, 2) between which
-    a layer can put stars into the bins.
+    of each star class, and the end); the grid's first y, steps per mag and length; and the shifts (layer, 2) between
+    which a layer can put stars into the bins.
     """
 
     lines: Lines

@@ -77,7 +77,7 @@ class _Reader:
             self.known_keys("census", census, {"density_pc3"})
             parameters[CENSUS] = self.parameter(CENSUS, census.get("density_pc3"), _CENSUS)
         elif any(isinstance(b, dict) and "share" in b.get("parameters", {}) for b in blocks):
-            self.wrong("component", "a share, but no component with amplitude = \"remainder\"", "one to take shares of")
+            self.wrong("component", 'a share, but no component with amplitude = "remainder"', "one to take shares of")
         components = [self.component(i, block, parameters) for i, block in enumerate(blocks)]
         names = [c.name for c in components if c]
         for name in {n for n in names if names.count(n) > 1}:

@@ -112,7 +112,9 @@ class Observation:
     def _is_constant(self, lo: float, hi: float) -> bool:
         """Whether the completeness is the same all over a bin: then the bin need not be divided."""
         inside = (self.completeness.m_mag > lo) & (self.completeness.m_mag < hi)
-        shares = np.append(np.interp([lo, hi], self.completeness.m_mag, self.completeness.share), self.completeness.share[inside])
+        shares = np.append(
+            np.interp([lo, hi], self.completeness.m_mag, self.completeness.share), self.completeness.share[inside]
+        )
         return bool(np.ptp(shares) == 0.0)
 
     def _landed(self, true_mag: np.ndarray, edges_mag: np.ndarray) -> np.ndarray:

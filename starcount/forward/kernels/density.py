@@ -12,7 +12,7 @@ _LN_PC3_PER_KPC3 = 9.0 * np.log(10.0)
 @kernel
 def layer_numbers(v, arrays):
     """Law parameters (layer, parameter), and ln of the amplitude over the law's value at its anchor (layer,)."""
-    index, scale, n_parameter, amplitude, anchor, density_at, slopes_at, total_at, R0 = arrays[:9]
+    index, scale, n_parameter, amplitude, anchor, density_at, _, total_at, R0 = arrays[:9]
     n_layer, n_most = index.shape
     theta, ln_scale = np.zeros((n_layer, n_most)), np.empty(n_layer)
     z0 = v[-1]

@@ -1,7 +1,7 @@
 """Moving stars from the nodes of a sight line onto the regular grid in y, and back.
 
 The weights are those of the Catmull-Rom spline (Catmull & Rom 1974): cubic, interpolating, with a continuous slope, so
-that the derivative by the extinction is exact and smooth. Stars outside the grid are brighter or fainter than every bin.
+that the derivative by the extinction is exact and smooth. Stars outside the grid are in no bin.
 """
 
 import numpy as np
@@ -51,7 +51,7 @@ def scatter(stars, mu, A, factor, weight, grid_start, first, last, grid):
 
 @kernel
 def gather(grid, mu, A, factor, weight, grid_start, first, last, value, by_factor):
-    """Add the transpose of ``scatter`` to ``value`` (node, layer), and its derivative by ``factor`` to ``by_factor``."""
+    """Add the transpose of ``scatter`` to ``value`` (node, layer), its derivative by ``factor`` to ``by_factor``."""
     row, w, part = spline_weights(mu, A, factor, weight, grid_start, grid.shape[0])
     for j in range(mu.size):
         rows, here, bent, t = grid[row[j] : row[j] + 4], value[j], by_factor[j], part[j]

@@ -1,6 +1,7 @@
 """How counts scatter around what is expected.
 
-To add a likelihood: write its file, import it here, add it to LIKELIHOODS. Each file holds the PyMC expression (``observe``) and the compiled terms of the same likelihood (``terms``).
+Each file holds the PyMC expression (``observe``) and the compiled terms of the same likelihood (``terms``). To add a
+likelihood: write its file, import it here, add it to LIKELIHOODS.
 """
 
 from types import ModuleType
