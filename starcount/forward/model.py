@@ -8,6 +8,9 @@ from starcount.forward.luminosity import CENSUS_POPULATION
 from starcount.galaxy import Galaxy
 from starcount.survey import Survey
 
+FIT_ACCURACY = 3e-4
+"""Accuracy of the sight lines of a fit: a hundredth of the smallest scatter that real counts have about a smooth model."""
+
 
 @dataclass(frozen=True, eq=False)
 class ForwardModel:

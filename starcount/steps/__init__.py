@@ -112,14 +112,14 @@ def fit(
 
     A fit that fails its checks is written too; then ``FailedChecks`` is raised, unless ``accept_failed``.
     """
-    from starcount.forward import ForwardModel, derived_quantities
+    from starcount.forward import FIT_ACCURACY, ForwardModel, derived_quantities
     from starcount.inference import fit_galaxy
     from starcount.predict import predict_counts
     from starcount.report import write_tables
 
     galaxy = galaxy or "default"
     final = folder.run_path(run or f"{record.short_name(survey)}-fit")
-    model = ForwardModel(read_survey(survey), read_galaxy(galaxy))
+    model = ForwardModel(read_survey(survey), read_galaxy(galaxy), FIT_ACCURACY)
     settings = {"likelihood": likelihood, "draws": draws, "chains": chains, "seed": seed}
     switches = {"lf_curve": curve, "census": census, "derived": derived_quantities(model.galaxy)}
     posterior = fit_galaxy(model, free, **switches, **settings, progress=progress)
