@@ -8,6 +8,14 @@ from importlib.metadata import PackageNotFoundError, version
 
 import xarray as xr
 
+try:
+    from pytensor.graph.traversal import ancestors
+except ImportError:  # PyTensor 2
+    from pytensor.graph.basic import ancestors
+
+MODE = "NUMBA"
+"""How every function is compiled; PyMC 5 would take its C back end, which needs a compiler."""
+
 _STATISTICS = {"depth": "tree_depth", "maxdepth_reached": "reached_max_treedepth", "logp": "lp"}
 _KEPT = ("diverging", "tree_depth", "n_steps", "step_size", "energy", "lp", "reached_max_treedepth")
 _PACKAGES = ("starcount", "numpy", "scipy", "numba", "pytensor", "pymc", "arviz", "nutpie", "xarray")
@@ -46,3 +54,6 @@ def _version(package: str) -> str | None:
         return version(package)
     except PackageNotFoundError:
         return None
+
+
+__all__ = ["MODE", "ancestors", "dataset", "is_finished", "sampler_statistics", "versions"]

@@ -16,11 +16,12 @@ import numpy as np
 import pymc as pm
 import pytensor
 import pytensor.tensor as pt
+from pytensor.graph.replace import graph_replace
 from scipy import linalg
 
 from starcount.errors import InputError
-from starcount.inference import likelihoods
-from starcount.inference.plain_mode import PLAIN_MODE
+from starcount.inference import compat, likelihoods
+from starcount.inference.kernel_calls import kernel_calls
 
 STEP = 1e-5
 """The step of differences, in standard deviations of the prior: slopes are right to about 1e-5, far finer than a map or
@@ -57,24 +58,34 @@ class Target:
 
     def _compile(self, point, ours, others) -> None:
         model = self.model
-        means = [mean for _, (_, mean, _) in ours]
-        spreads = [pt.as_tensor_variable(0.0 if d is None else d) for _, (_, _, d) in ours]
         named = [v for v in model.unobserved_RVs if v.name in model.named_vars]
         self.names = tuple(v.name for v in named)
         rest = model.logp(vars=[*model.free_RVs, *model.potentials, *others])
-        pulls = [mean.type() for mean in means] + [pt.dscalar() for _ in spreads]
-        expected = model.replace_rvs_by_values([*means, *spreads])
-        pulled = sum((pt.sum(pull * one) for pull, one in zip(pulls, expected, strict=True)), pt.constant(0.0))
-        self._means = self._function(point, expected)
-        self._pull_back = self._function(point, [pulled], pulls, gradient=True, value=False)
-        self._rest = self._function(point, [rest], gradient=True)
+        self._rest = self._function(point, [rest], gradient_of=rest)
         self._named = self._function(point, model.replace_rvs_by_values(named))
+        spreads = [pt.as_tensor_variable(0.0 if d is None else d) for _, (_, _, d) in ours]
+        outputs = model.replace_rvs_by_values([*(mean for _, (_, mean, _) in ours), *spreads])
+        self.calls_of_kernels = kernel_calls(outputs, model.value_vars)
+        counts = [call.counts.type() for call in self.calls_of_kernels]
+        cut = graph_replace(outputs, {call.counts: one for call, one in zip(self.calls_of_kernels, counts, strict=True)})
+        inputs = [one for call in self.calls_of_kernels for one in call.inputs]
+        moving = [one for call in self.calls_of_kernels for one in call.moving]
+        self._inputs = self._function(point, inputs)
+        self._means_of = self._function(point, cut, counts)
+        pulls = [*(one.type() for one in cut[: len(ours)]), *(pt.dscalar() for _ in spreads)]
+        pulled = _contracted(pulls, cut)
+        self._pull = self._function(point, [], [*counts, *pulls], gradient_of=pulled, also_by=counts)
+        back = [one.type() for one in moving]
+        self._back = self._function(point, [], back, gradient_of=_contracted(back, moving))
 
-    def _function(self, point, outputs, more_inputs=(), gradient=False, value=True):
-        outputs, x = pm.pytensorf.join_nonshared_inputs(point, outputs, self.model.value_vars)
-        if gradient:
-            outputs = [*outputs[: int(value)], pytensor.grad(outputs[0], x)]
-        return pytensor.function([x, *more_inputs], outputs, mode=PLAIN_MODE, on_unused_input="ignore")
+    def _function(self, point, outputs, more_inputs=(), gradient_of=None, also_by=()):
+        """Compile ``outputs``, and the gradient of ``gradient_of`` by x and by further variables, as functions of x."""
+        wanted = [*outputs, *([] if gradient_of is None else [gradient_of])]
+        joined, x = pm.pytensorf.join_nonshared_inputs(point, wanted, self.model.value_vars)
+        found = joined[: len(outputs)]
+        if gradient_of is not None:
+            found += pytensor.grad(joined[-1], [x, *also_by], disconnected_inputs="ignore")
+        return pytensor.function([x, *more_inputs], found, mode=compat.MODE, on_unused_input="ignore")
 
     def copy(self) -> "Target":
         """Return the target with functions of its own: a compiled function holds state, so threads must not share one.
@@ -82,7 +93,7 @@ class Target:
         Calls are counted in the original.
         """
         twin = copy(self)
-        for name in ("_means", "_pull_back", "_rest", "_named"):
+        for name in ("_inputs", "_means_of", "_pull", "_back", "_rest", "_named"):
             setattr(twin, name, getattr(self, name).copy())
         twin._count = self._count
         return twin
@@ -123,16 +134,25 @@ class Target:
         """Return ln of the posterior, up to a constant, and its gradient (p,)."""
         self._count()
         value, gradient = self._rest(x)
-        means, spreads = self.means(x)
+        done, (means, spreads) = self._forward(x)
         terms = [_terms(*one) for one in zip(self.counts, self.observed, means, spreads, strict=True)]
         by_spread = [one[3] / spread if spread > 0 else 0.0 for one, spread in zip(terms, spreads, strict=True)]
-        (pulled,) = self._pull_back(x, *(one[1] for one in terms), *by_spread)
-        return float(value) + sum(one[0] for one in terms), gradient + pulled
+        by_mean = [one[1] for one in terms]
+        direct, *by_counts = self._pull(x, *(one.counts for one in done), *by_mean, *by_spread)
+        moved = [g for one, by_count in zip(done, by_counts, strict=True) for g in one.pull_back(by_count)]
+        (through_kernels,) = self._back(x, *moved)
+        return float(value) + sum(one[0] for one in terms), gradient + direct + through_kernels
 
     def means(self, x: np.ndarray) -> tuple[list[np.ndarray], list[float]]:
         """Return the expected counts of each observed variable, used bins in a row, and its dispersion."""
-        found, n = self._means(x), len(self.counts)
-        return found[:n], [float(np.ravel(d)[0]) for d in found[n:]]
+        return self._forward(x)[1]
+
+    def _forward(self, x: np.ndarray):
+        """The kernels' results, and what ``means`` returns."""
+        inputs = iter(self._inputs(x))
+        done = [call(*(next(inputs) for _ in call.inputs)) for call in self.calls_of_kernels]
+        found, n = self._means_of(x, *(one.counts for one in done)), len(self.counts)
+        return done, (found[:n], [float(np.ravel(d)[0]) for d in found[n:]])
 
     def named(self, x: np.ndarray) -> dict[str, np.ndarray]:
         """Return every named variable of the model in its own units."""
@@ -173,3 +193,9 @@ def _terms(counts: Counts, n: np.ndarray, mean: np.ndarray, dispersion: float):
     """The compiled terms of one observed variable, all of whose bins are used."""
     found = counts.likelihood.terms(n[None, :], np.ones((1, n.size), bool), mean[None, :], dispersion)
     return [one[0] for one in found]
+
+
+def _contracted(cotangents, variables):
+    """The sum of the products of variables with their cotangents: its gradient is their pull-back."""
+    pairs = zip(cotangents, variables, strict=True)
+    return sum((pt.sum(cotangent * one) for cotangent, one in pairs), pt.constant(0.0))
