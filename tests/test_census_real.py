@@ -22,7 +22,7 @@ def test_stars_within_25_pc(hipparcos):
 
 
 def test_the_dwarfs_of_the_reference_window(hipparcos):
-    """Hp - V is 0.10 to 0.17 for 4.5 < M_V < 8.5, so M_Hp limits shifted by 0.13 hold the census's stars, to 6 %, as above."""
+    """Hp - V is 0.10 to 0.17 for 4.5 < M_V < 8.5, so limits shifted by 0.13 hold the census's stars, to 6 % (above)."""
     near = hipparcos[hipparcos[:, 0] >= 40.0]
     M_Hp = near[:, 1] + 5.0 * np.log10(near[:, 0] / 100.0)
     counted = np.sum((M_Hp > 4.63) & (M_Hp < 8.63))

@@ -41,8 +41,8 @@ class Done:
 class KernelCall:
     """One call of the projection in a graph.
 
-    ``inputs`` are its variables v, luminosity function (or matrix, where that is data) and ln_dust; ``moves`` says which
-    of them depend on the fitted numbers, ``moving`` are those; ``counts`` is the variable of its result.
+    ``inputs`` are its variables v, luminosity function (or matrix, where that is data) and ln_dust; ``moves`` says
+    which of them depend on the fitted numbers, ``moving`` are those; ``counts`` is the variable of its result.
     """
 
     kernels: object

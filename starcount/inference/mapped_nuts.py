@@ -21,7 +21,7 @@ from starcount.inference import compat
 from starcount.inference.quadratic_map import QuadraticMap
 from starcount.inference.target import Target
 
-TARGET_ACCEPT = 0.7
+TARGET_ACCEPT = 0.85
 SAMPLER = "NUTS in mapped coordinates (nutpie)"
 _POLL_S = 0.2
 _STEPS_A_DRAW = 7.0  # leapfrog steps of a nearly normal posterior: what the progress is reckoned by
@@ -89,4 +89,5 @@ def _as_nutpie_model(target: Target, q: QuadraticMap):
         expanded_dtypes=[np.dtype(np.float64)],
         expanded_shapes=[(target.size,)],
         expanded_names=["z"],
+        make_initial_point_fn=lambda seed: np.random.default_rng(seed).standard_normal(target.size),
     )

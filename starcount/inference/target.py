@@ -67,7 +67,9 @@ class Target:
         outputs = model.replace_rvs_by_values([*(mean for _, (_, mean, _) in ours), *spreads])
         self.calls_of_kernels = kernel_calls(outputs, model.value_vars)
         counts = [call.counts.type() for call in self.calls_of_kernels]
-        cut = graph_replace(outputs, {call.counts: one for call, one in zip(self.calls_of_kernels, counts, strict=True)})
+        cut = graph_replace(
+            outputs, {call.counts: one for call, one in zip(self.calls_of_kernels, counts, strict=True)}
+        )
         inputs = [one for call in self.calls_of_kernels for one in call.inputs]
         moving = [one for call in self.calls_of_kernels for one in call.moving]
         self._inputs = self._function(point, inputs)

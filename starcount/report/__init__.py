@@ -1,27 +1,32 @@
-"""Figures, tables and the page that puts them together. A new figure: one function and a row in FIGURES."""
+"""Figures, tables and the page that puts them together. A new figure: one function and a row in FIGURES.
 
-from starcount.report.content import CurveDraws, PageContent, ParameterDraws, Verdict
-from starcount.report.figures import FIGURES, draw_figure
-from starcount.report.gather import page_content
-from starcount.report.page import PAGE, render, write_page
-from starcount.report.parameters import derived_table, parameter_table
-from starcount.report.style import save_figure
-from starcount.report.tables import write_table, write_tables
+Names are imported when first used: tables are written without loading the plotting library.
+"""
 
-__all__ = [
-    "FIGURES",
-    "PAGE",
-    "CurveDraws",
-    "PageContent",
-    "ParameterDraws",
-    "Verdict",
-    "derived_table",
-    "draw_figure",
-    "page_content",
-    "parameter_table",
-    "render",
-    "save_figure",
-    "write_page",
-    "write_table",
-    "write_tables",
-]
+from importlib import import_module
+
+_HOME = {
+    "FIGURES": "figures",
+    "PAGE": "page",
+    "CurveDraws": "content",
+    "PageContent": "content",
+    "ParameterDraws": "content",
+    "Verdict": "content",
+    "derived_table": "parameters",
+    "draw_figure": "figures",
+    "page_content": "gather",
+    "parameter_table": "parameters",
+    "render": "page",
+    "save_figure": "style",
+    "write_page": "page",
+    "write_table": "tables",
+    "write_tables": "tables",
+}
+
+__all__ = list(_HOME)
+
+
+def __getattr__(name: str):
+    if name not in _HOME:
+        raise AttributeError(f"module 'starcount.report' has no attribute {name!r}")
+    return getattr(import_module(f"starcount.report.{_HOME[name]}"), name)
