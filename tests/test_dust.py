@@ -9,9 +9,9 @@ import pytest
 from numpy.testing import assert_allclose
 from scipy.integrate import quad
 
-from starcount.constants import R0_KPC
 from starcount.dust import D0, DUST, A_V_mag, band_coefficient
 from starcount.errors import InputError, UnknownName
+from starcount.galaxy import read_galaxy
 
 # A_V of the disc with these parameters by the trapezium rule on 40 000 nodes: l, b, then 0.5, 1, 2, 4, 8, 8.2, 20 kpc.
 TABLE = """
@@ -116,9 +116,9 @@ def test_about_thirty_magnitudes_to_the_galactic_centre():
 
     Stars give about 30 (Nogueras-Lara et al. 2020), a near-infrared law 21 to 39; D0 says 26.
     """
-    assert 25 < d0(0, 0, R0_KPC)[0] < 32
+    assert 25 < d0(0, 0, read_galaxy().R0_kpc)[0] < 32
     assert_allclose(10 ** (-0.4 * 30), 1e-12, rtol=1e-9)
-    assert_allclose(R0_KPC * 3261.56, 26_000, rtol=0.03)  # light years in a kiloparsec
+    assert_allclose(read_galaxy().R0_kpc * 3261.56, 26_000, rtol=0.03)  # light years in a kiloparsec
 
 
 def test_poles():

@@ -1,6 +1,7 @@
 """The machinery of a fit, on the invented toy sky: gradients, likelihoods, priors, map and mode."""
 
 from dataclasses import replace
+from types import SimpleNamespace
 
 import numpy as np
 import pytensor
@@ -178,19 +179,26 @@ def test_parameters_without_a_usable_prior_are_refused():
 # The curves of the luminosity functions
 
 
+def components(*names):
+    """Components of these names; only "thin" is made of the census, and "bulge" is scaled by its total."""
+    kinds = {"thin": ("census", "sun"), "bulge": ("bulge", "total")}
+    found = (kinds.get(name, ("old stars", "sun")) for name in names)
+    return [SimpleNamespace(name=n, population=p, anchor=a) for n, (p, a) in zip(names, found, strict=True)]
+
+
 def test_a_curve_is_zero_on_average_over_the_reference_window():
     """Only then does the amplitude alone set the number of stars; rounding."""
-    disc, old = curve.curves(("thin", "thick", "bulge"), M_EDGES_MAG)
+    disc, old = curve.curves(parts := components("thin", "thin", "thick", "bulge"), M_EDGES_MAG)
     middle = 0.5 * (M_EDGES_MAG[1:] + M_EDGES_MAG[:-1])
     inside = (middle > 4.5) & (middle < 8.5)
     assert_allclose((curve.hat(middle[inside]) @ disc.spread).mean(axis=0), 0.0, atol=1e-14)
     assert (disc.components, old.components) == (("thin",), ("thick",))
-    assert list(curve.owners((disc, old), ("thin", "thin", "thick", "bulge"))) == [1, 1, 2, 0]
+    assert list(curve.owners((disc, old), parts)) == [1, 1, 2, 0]
 
 
 def test_curves_bend_as_their_prior_says():
     """Second differences of drawn curves scatter by at most 0.10, and by most of that."""
-    disc, _ = curve.curves(("thin", "thick"), M_EDGES_MAG)
+    disc, _ = curve.curves(components("thin", "thick"), M_EDGES_MAG)
     drawn = disc.spread @ np.random.default_rng(0).standard_normal((disc.spread.shape[1], 4000))
     scatter = np.diff(drawn, 2, axis=0).std(axis=1)
     assert scatter.max() < 0.105

@@ -162,7 +162,10 @@ class ToyGalaxy:
             name: Parameter(name, value, error, "kpc", lower, upper, prior, "invented", "invented")
             for name, value, error, prior, lower, upper in rows
         }
-        self.layers = tuple((SimpleNamespace(name=name), None) for name in ("thin", "thick"))
+        self.layers = tuple(
+            (SimpleNamespace(name=name, population=kind, anchor="sun"), None)
+            for name, kind in (("thin", "census"), ("thick", "old stars"))
+        )
 
     @property
     def values(self):

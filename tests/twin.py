@@ -48,9 +48,9 @@ def bar(R, phi, z, theta, sun):
     """Per pc^3 for one star in all: the boxy Gaussian over its integral, 6.5725 pi x0 y0 z0."""
     a = np.radians(theta["alpha_deg"])
     x, y = -R * np.cos(phi), R * np.sin(phi)
-    X, Y = (-x * np.cos(a) + y * np.sin(a)) / theta["x0_kpc"], (-x * np.sin(a) - y * np.cos(a)) / theta["y0_kpc"]
-    r2 = np.sqrt((X**2 + Y**2) ** 2 + (z / theta["z0_kpc"]) ** 4)
-    return np.exp(-r2 / 2) / (20.6482 * theta["x0_kpc"] * theta["y0_kpc"] * theta["z0_kpc"] * 1e9)
+    X, Y = (-x * np.cos(a) + y * np.sin(a)) / theta["a_kpc"], (-x * np.sin(a) - y * np.cos(a)) / theta["b_kpc"]
+    r2 = np.sqrt((X**2 + Y**2) ** 2 + (z / theta["c_kpc"]) ** 4)
+    return np.exp(-r2 / 2) / (20.6482 * theta["a_kpc"] * theta["b_kpc"] * theta["c_kpc"] * 1e9)
 
 
 LAWS = {"disc": disc, "halo": halo, "bar": bar, "uniform": lambda R, phi, z, theta, sun: np.ones_like(R)}

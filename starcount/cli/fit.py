@@ -15,7 +15,7 @@ from starcount.cli import screen
     "free",
     multiple=True,
     metavar="PARAMETER",
-    help="A parameter to fit; repeat it, or separate with commas.  [default: those the Galaxy lists for fits]",
+    help="A parameter to fit; repeat it, or separate with commas.  [default: all that have an error in the Galaxy]",
 )
 @click.option(
     "--likelihood",

@@ -19,7 +19,8 @@ def derived_quantities(galaxy: Galaxy) -> Callable[[Mapping[str, float]], dict[s
     """Return a function from a Galaxy's numbers (by name) to its derived quantities (by name).
 
     ``effective_height_kpc``: the scale height of one exponential fitted (least squares in ln n, equal weights) to the
-    density of dwarfs of 5.5 < M_V < 8.5, all components together, at 0.3 < z < 1.2 kpc above the Sun's foot point.
+    density of dwarfs of 5.5 < M_V < 8.5, all components together, at 0.3 < z < 1.2 kpc above the Sun's foot point;
+    with the tabulated luminosity functions (a fitted curve averages to nothing over the window that holds them).
     ``NAME.surface_pc2``: stars of the reference window per square parsec through the plane at the Sun, for components
     scaled there. ``NAME.surface_ratio``: the same over that of the remainder, for components that are a share of it.
     """

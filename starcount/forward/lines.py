@@ -1,5 +1,6 @@
 """The sight lines of a group of fields, with as many nodes as each needs."""
 
+import logging
 from collections.abc import Callable
 
 import numpy as np
@@ -11,7 +12,12 @@ from starcount.galaxy import Galaxy
 from starcount.galaxy.frame import unit_vectors
 from starcount.survey import Group
 
+log = logging.getLogger(__name__)
+
 _MOST_HALVINGS = 7
+MOST_DUST = 4.0
+"""A fit may raise or lower a field's extinction by this factor before stars are missed."""
+
 _NEGLIGIBLE = 1e-6  # part of a bin that the nearest nodes may hold and still be left out
 
 
@@ -35,9 +41,14 @@ def group_lines(
         fine = _Trial(group, galaxy, extinction, pending, halvings)
         fine_counts = count(fine.lines)
         allowed = accuracy * fine_counts + 1e-9 * fine_counts.max(axis=1, keepdims=True)
-        done = (np.abs(fine_counts - coarse_counts) <= allowed).all(axis=1) | (halvings == _MOST_HALVINGS)
+        done = (np.abs(fine_counts - coarse_counts) <= allowed).all(axis=1)
         for row in np.flatnonzero(done):
             settled[pending[row]] = coarse.row(row)
+        if halvings == _MOST_HALVINGS and not done.all():
+            log.warning("group %s: %d sight lines are not settled to %g", group.name, np.sum(~done), accuracy)
+            for row in np.flatnonzero(~done):
+                settled[pending[row]] = fine.row(row)
+            break
         pending, open_rows = pending[~done], np.flatnonzero(~done)
         if not pending.size:
             break
@@ -133,7 +144,8 @@ def _join(group: Group, settled: list, y_range_mag, first_mu: float) -> Lines:
     """One line after the other, without the nodes that cannot reach a bin."""
     kept, sizes = [], []
     for (d, volume, mu, A), omega in zip(settled, group.sight_lines.omega_sr, strict=True):
-        reach = (mu + A > y_range_mag[0]) & (mu + A < y_range_mag[1]) & (mu >= first_mu)
+        # Room for a fit to change a field's extinction: the nodes that could then reach a bin stay.
+        reach = (mu + MOST_DUST * A > y_range_mag[0]) & (mu + A / MOST_DUST < y_range_mag[1]) & (mu >= first_mu)
         reach[np.argmin(np.abs(mu + A - np.mean(y_range_mag)))] = True  # a line keeps at least one node
         kept.append((d[reach], volume[reach] * omega, mu[reach], A[reach]))
         sizes.append(int(reach.sum()))

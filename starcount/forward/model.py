@@ -9,7 +9,7 @@ from starcount.galaxy import Galaxy
 from starcount.survey import Survey
 
 FIT_ACCURACY = 3e-4
-"""Accuracy of the sight lines of a fit: a hundredth of the least scatter of real counts about a smooth model."""
+"""Accuracy of the sight lines of a fit: a hundredth of the scatter real counts usually have."""
 
 
 @dataclass(frozen=True, eq=False)

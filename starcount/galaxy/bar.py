@@ -1,8 +1,8 @@
-"""The bar: the boxy triaxial Gaussian, ln n = -r_s^2 / 2 with r_s^4 = [(X/x0)^2 + (Y/y0)^2]^2 + (Z/z0)^4.
+"""The bar: the boxy triaxial Gaussian, ln n = -r_s^2 / 2 with r_s^4 = [(X/a)^2 + (Y/b)^2]^2 + (Z/c)^4.
 
 Form G2 of Dwek et al. 1995, ApJ 445, 716. X runs along the bar, whose near end lies at positive longitude: the angle
 between bar and Sun-centre line is alpha, X = R cos(phi - alpha), Y = -R sin(phi - alpha), Z = z. Normalised by its
-integral over space, pi sqrt(2 pi) B(1/4, 1/2)/2 x0 y0 z0: a bar has no sensible value at the Sun.
+integral over space, pi sqrt(2 pi) B(1/4, 1/2)/2 a b c: a bar has no sensible value at the Sun.
 """
 
 import math
@@ -61,9 +61,9 @@ BAR = Law(
     meaning="boxy triaxial Gaussian bar",
     reference="Dwek et al. 1995, ApJ 445, 716 (form G2)",
     parameters=(
-        LawParameter("x0_kpc", "kpc", "scale along the bar", 0.2, 5.0),
-        LawParameter("y0_kpc", "kpc", "scale across the bar in the plane", 0.1, 3.0),
-        LawParameter("z0_kpc", "kpc", "vertical scale", 0.05, 2.0),
+        LawParameter("a_kpc", "kpc", "scale along the bar", 0.2, 5.0),
+        LawParameter("b_kpc", "kpc", "scale across the bar in the plane", 0.1, 3.0),
+        LawParameter("c_kpc", "kpc", "vertical scale", 0.05, 2.0),
         LawParameter("alpha_deg", "deg", "angle of the bar, near end at positive longitude", -90.0, 90.0),
     ),
     ln_density=ln_density,

@@ -46,7 +46,7 @@ def slopes(n, theta, R, cos_phi, sin_phi, z, out):
         out[3 * n + j] = 0.0
         out[4 * n + j] = 0.0
         out[5 * n + j] = 0.0  # the vertical family is a setting
-        out[6 * n + j] = -1.0 / h_R + R_hole / max(R[j] * R[j], _AXIS_KPC)
+        out[6 * n + j] = -1.0 / h_R + R_hole / max(R[j] * R[j], _AXIS_KPC * _AXIS_KPC)
         out[7 * n + j] = 0.0
     for j in range(n):
         height = abs(z[j])

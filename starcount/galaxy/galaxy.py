@@ -5,7 +5,6 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from starcount.errors import UnknownName
 from starcount.galaxy.component import Component, Layer, Parameter
 from starcount.galaxy.frame import galactocentric
 
@@ -51,13 +50,6 @@ class Galaxy:
     def layers(self) -> tuple[tuple[Component, Layer], ...]:
         """All layers with their components, in the order of every (layer, ...) array."""
         return tuple((component, layer) for component in self.components for layer in component.layers)
-
-    def component(self, name: str) -> Component:
-        """Return a component by its name."""
-        for component in self.components:
-            if component.name == name:
-                return component
-        raise UnknownName("component", name, tuple(c.name for c in self.components))
 
     def theta(self, component: Component, values: Mapping) -> list:
         """The parameters of a component's law, in the law's order."""

@@ -9,6 +9,7 @@ from difflib import get_close_matches
 from importlib import resources
 from pathlib import Path
 
+from starcount.constants import STAR_CLASSES
 from starcount.errors import Problem, Problems, UnknownName
 from starcount.galaxy.component import PRIORS, Component, Layer, Parameter
 from starcount.galaxy.galaxy import CENSUS, Z0, Galaxy
@@ -52,6 +53,10 @@ def read_galaxy(name_or_path: str | Path = "default") -> Galaxy:
     return _Reader(label).galaxy(text)
 
 
+def _is_number(given) -> bool:
+    return isinstance(given, int | float) and not isinstance(given, bool)
+
+
 class _Reader:
     """Collects the problems of one file while its parts are built."""
 
@@ -64,6 +69,8 @@ class _Reader:
 
     def galaxy(self, text: dict) -> Galaxy:
         self.known_keys("", text, _TOP)
+        if text.get("format") != 1:
+            self.wrong("format", repr(text.get("format")), "1")
         sun = self.table("sun", text.get("sun", {}))
         self.known_keys("sun", sun, {"R0_kpc", "z0_kpc"})
         R0 = self.number("sun.R0_kpc", sun.get("R0_kpc"), 1.0, 20.0)
@@ -72,11 +79,16 @@ class _Reader:
         if not isinstance(blocks, list) or not blocks:
             self.wrong("component", "no component", "at least one [[component]]")
             blocks = []
-        if any(isinstance(b, dict) and b.get("amplitude") == "remainder" for b in blocks):
+        remainders = sum(isinstance(b, dict) and b.get("amplitude") == "remainder" for b in blocks)
+        if remainders > 1:
+            self.wrong(
+                "component", f'{remainders} components with amplitude = "remainder"', "one: what the census leaves"
+            )
+        if remainders:
             census = self.table("census", text.get("census", {}))
             self.known_keys("census", census, {"density_pc3"})
             parameters[CENSUS] = self.parameter(CENSUS, census.get("density_pc3"), _CENSUS)
-        elif any(isinstance(b, dict) and "share" in b.get("parameters", {}) for b in blocks):
+        elif any(isinstance(b, dict) and b.get("amplitude") == "share" for b in blocks):
             self.wrong("component", 'a share, but no component with amplitude = "remainder"', "one to take shares of")
         components = [self.component(i, block, parameters) for i, block in enumerate(blocks)]
         names = [c.name for c in components if c]
@@ -95,14 +107,14 @@ class _Reader:
             return None
         where = f"component {name!r}"
         self.known_keys(where, block, _COMPONENT)
-        law = LAWS.get(block.get("law"))
+        law = LAWS.get(block["law"]) if isinstance(block.get("law"), str) else None
         if law is None:
             self.wrong(f"{where}.law", repr(block.get("law")), f"one of {', '.join(sorted(LAWS))}")
             return None
         amplitude = block.get("amplitude")
         given = dict(self.table(f"{where}.parameters", block.get("parameters", {})))
         expected = {p.name: p for p in law.parameters}
-        if amplitude in _AMPLITUDE:
+        if isinstance(amplitude, str) and amplitude in _AMPLITUDE:
             expected[amplitude] = _AMPLITUDE[amplitude]
         elif amplitude != "remainder":
             self.wrong(f"{where}.amplitude", repr(amplitude), "one of remainder, share, density, total")
@@ -114,7 +126,11 @@ class _Reader:
         population = block.get("population")
         if not isinstance(population, str):
             self.wrong(f"{where}.population", repr(population), "'census', a population's name, or a path to a table")
-        layers = tuple(self.layer(where, j, b, law) for j, b in enumerate(block.get("layer", [{"name": name}])))
+        blocks = block.get("layer", [{"name": name}])
+        if not isinstance(blocks, list):
+            self.wrong(f"{where}.layer", repr(blocks), "[[component.layer]] blocks")
+            blocks = []
+        layers = tuple(self.layer(where, j, b, law) for j, b in enumerate(blocks))
         return Component(name, str(block.get("meaning", "")), law, str(population), str(amplitude), layers)
 
     def layer(self, where: str, j: int, block: dict, law: Law) -> Layer:
@@ -128,16 +144,22 @@ class _Reader:
             if key not in by_name:
                 self.wrong(f"{where}.{key}", "a parameter the law does not have", f"one of {', '.join(by_name)}")
         M = block.get("M_mag")
-        if M is not None and not (isinstance(M, list) and len(M) == 2 and M[0] < M[1]):
+        if M is not None and not (isinstance(M, list) and len(M) == 2 and all(map(_is_number, M)) and M[0] < M[1]):
             self.wrong(f"{where}.M_mag", repr(M), "[brighter limit, fainter limit]")
             M = None
         return Layer(
             name=str(block.get("name", f"layer {j + 1}")),
-            classes=tuple(block["classes"]) if "classes" in block else None,
+            classes=self.classes(f"{where}.classes", block["classes"]) if "classes" in block else None,
             M_mag=tuple(map(float, M)) if M else None,
             ratios={k: self.number(f"{where}.ratios.{k}", x, 1e-3, 1e3) for k, x in ratios.items() if k in by_name},
             settings={k: self.choice(f"{where}.{k}", x, by_name[k]) for k, x in settings.items() if k in by_name},
         )
+
+    def classes(self, where: str, given) -> tuple[str, ...] | None:
+        if isinstance(given, list) and given and set(map(str, given)) <= set(STAR_CLASSES):
+            return tuple(given)
+        self.wrong(where, repr(given), f"a list of {', '.join(map(repr, STAR_CLASSES))}")
+        return None
 
     def parameter(self, name: str, given, law: LawParameter, default_prior="lognormal") -> Parameter:
         """A parameter from ``{value, error, prior, lower, upper, reference}``, a bare number or a choice by name."""
@@ -170,8 +192,7 @@ class _Reader:
         return self.number(where, given, max(lower, law.lower), min(upper, law.upper))
 
     def number(self, where: str, given, lower: float, upper: float) -> float:
-        usable = isinstance(given, int | float) and not isinstance(given, bool) and lower <= given <= upper
-        if not usable:
+        if not (_is_number(given) and lower <= given <= upper):
             found = "missing" if given is None else repr(given)
             self.wrong(where, found, f"a number from {lower:g} to {upper:g}")
             return math.nan

@@ -9,6 +9,7 @@ at its knot. Its prior: second differences scatter by ``BEND``, the mean level b
 curve averages to zero over the reference window, where the amplitude alone sets the number of stars.
 """
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -16,13 +17,17 @@ import pymc as pm
 from scipy import linalg
 
 from starcount.constants import REFERENCE_WINDOW_MV_MAG
+from starcount.forward.luminosity import CENSUS_POPULATION
 
 KNOTS_MAG = np.arange(-2.0, 16.1, 2.0)
 BEND = 0.10
 LEVEL = 0.05
 WIDTH = 0.30
-GROUPS = {"disc": ("thin",), "old": ("thick", "halo")}
-"""The curves and the components whose layers they correct; others keep their tables."""
+GROUPS = {
+    "disc": lambda component: component.population == CENSUS_POPULATION,
+    "old": lambda component: component.population != CENSUS_POPULATION and component.anchor == "sun",
+}
+"""The curves and the components whose layers they correct; others (scaled by their total) keep their tables."""
 
 DIMENSION = "knot_mag"
 
@@ -50,10 +55,10 @@ def hat(M_mag: np.ndarray) -> np.ndarray:
     return np.stack([np.interp(M_mag, KNOTS_MAG, row) for row in np.eye(KNOTS_MAG.size)], axis=1)
 
 
-def curves(components: tuple[str, ...], M_edges_mag: np.ndarray) -> tuple[Curve, ...]:
-    """Return the curves that correct any of these components; ``M_edges_mag`` are the cells' edges (cell + 1,)."""
+def curves(components: Sequence, M_edges_mag: np.ndarray) -> tuple[Curve, ...]:
+    """Return the curves that correct any of a Galaxy's components; ``M_edges_mag`` are the cells' edges (cell + 1,)."""
     spread = _spread(0.5 * (M_edges_mag[1:] + M_edges_mag[:-1]))
-    found = ((name, tuple(c for c in members if c in components)) for name, members in GROUPS.items())
+    found = ((name, tuple(dict.fromkeys(c.name for c in components if ours(c)))) for name, ours in GROUPS.items())
     return tuple(Curve(name, members, spread) for name, members in found if members)
 
 
@@ -66,7 +71,7 @@ def _spread(M_mag: np.ndarray) -> np.ndarray:
     return free @ linalg.cholesky(linalg.inv(free.T @ precision @ free), lower=True)
 
 
-def owners(curves: tuple[Curve, ...], components: tuple[str, ...]) -> np.ndarray:
+def owners(curves: tuple[Curve, ...], components: Sequence) -> np.ndarray:
     """Return which curve corrects each layer: 0 for none, else 1 + its index; ``components`` are the layers' own."""
     number = {c: i + 1 for i, curve in enumerate(curves) for c in curve.components}
-    return np.array([number.get(c, 0) for c in components])
+    return np.array([number.get(c.name, 0) for c in components])

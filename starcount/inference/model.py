@@ -40,7 +40,7 @@ def build_model(
     chosen = choose(forward_model.galaxy, parameters)
     groups = fitted_groups(forward_model, census)
     _check(forward_model, chosen, groups)
-    components = tuple(component.name for component, _ in forward_model.galaxy.layers)
+    components = tuple(component for component, _ in forward_model.galaxy.layers)
     with pm.Model(coords={curve.DIMENSION: curve.KNOTS_MAG}) as model:
         values = {p.name: priors.variable(p) for p in chosen}
         v = forward_model.galaxy.vector(values, xp=pt)
@@ -118,7 +118,7 @@ def _with_stars(group):
 
 
 def _check(forward_model, chosen, groups) -> None:
-    data = sum(int(group.used.sum()) for group in groups.values())
+    data = sum(int(group.used.sum()) for name, group in groups.items() if name != CENSUS)
     if data < len(chosen):
         raise InputError(f"{data} counts cannot fix {len(chosen)} parameters; expected at least as many counts")
     overlapping = overlapping_fields(forward_model.survey)
@@ -127,7 +127,7 @@ def _check(forward_model, chosen, groups) -> None:
         raise InputError(f"fields overlap in the same bins: {first} (and {len(overlapping) - 1} more pairs)")
 
 
-def _lf_factor(components: tuple[str, ...]):
+def _lf_factor(components: Sequence):
     """The correction of the luminosity functions (layer, cell) by the smooth curves, and 1 where there is none."""
     middle = 0.5 * (M_EDGES_MAG[1:] + M_EDGES_MAG[:-1])
     found = curve.curves(components, M_EDGES_MAG)

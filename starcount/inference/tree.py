@@ -174,7 +174,7 @@ def _attributes(fit: Fit, posterior: xr.Dataset, derived: tuple[str, ...]) -> di
     fitted = (*model.choose(fit.galaxy, fit.parameters), *(model.floor_of(name) for name in with_floor))
     table = prior_table(fitted)
     rows = [{name: column.tolist()[i] for name, column in table.columns.items()} for i in range(len(table))]
-    components = tuple(component.name for component, _ in fit.galaxy.layers)
+    components = tuple(component for component, _ in fit.galaxy.layers)
     used_curves = curve.curves(components, model.M_EDGES_MAG) if fit.lf_curve else ()
     return {
         "starcount_posterior": FORMAT,

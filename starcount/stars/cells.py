@@ -3,9 +3,9 @@
 import numpy as np
 from scipy.interpolate import PchipInterpolator
 
-from starcount.constants import REFERENCE_WINDOW_MV_MAG
+from starcount.constants import REFERENCE_WINDOW_MV_MAG, STAR_CLASSES
 
-CLASSES = ("dwarf", "evolved", "white dwarf")
+CLASSES = STAR_CLASSES
 """What a star is: on the main sequence, on its way from it (subgiants, giants), or a white dwarf."""
 
 M_EDGES_MAG = np.round(np.linspace(-8.0, 22.0, 601), 2)
