@@ -21,6 +21,9 @@ def check(survey: Path, as_json: bool) -> None:
     screen.show(record, _lines(record), as_json)
 
 
+_MOST_PAIRS = 10
+
+
 def _lines(record: dict) -> list[str]:
     head = ["group", "band", "fields", "area [deg2]", "bins", "from", "to [mag]", "stars"]
     rows = [
@@ -37,4 +40,8 @@ def _lines(record: dict) -> list[str]:
         for group in record["groups"]
     ]
     invented = " (invented)" if record["invented"] else ""
-    return [f"{record['survey']}{invented}: in order", *screen.columns([head, *rows])]
+    pairs = [
+        f"note: {first} and {second} overlap in the same bins; a fit refuses them"
+        for first, second in record["overlapping"]
+    ]
+    return [f"{record['survey']}{invented}: in order", *screen.columns([head, *rows]), *pairs[:_MOST_PAIRS]]

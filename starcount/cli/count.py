@@ -15,7 +15,8 @@ from starcount.cli import screen
     "columns",
     multiple=True,
     metavar="KEY=COLUMN",
-    help="Which column is l and b, or ra and dec, and mag, e.g. ra=RAJ2000; unit=deg where a file says no unit. "
+    help="Which column is l and b, or ra and dec, and mag, e.g. ra=RAJ2000; unit=rad where angles are not in degrees "
+    "and the file does not say so. "
     "Without it columns are found by name and unit.",
 )
 @click.option("--cut", "cuts", multiple=True, metavar="COMPARISON", help='Keep rows where it holds, e.g. "ruwe < 1.4".')
@@ -40,8 +41,10 @@ def _lines(record: dict) -> list[str]:
     rows = [["rows read", str(found["rows"])], ["counted", str(found["counted"])]]
     rows += [[reason, str(n)] for reason, n in found["dropped"].items()]
     used = ", ".join(f"{key}={column}" for key, column in found["columns"].items())
+    empty = [] if found["counted"] else ["warning: not one star was counted; check positions, units and magnitudes"]
     return [
         *screen.columns(rows),
+        *empty,
         f"columns used: {used}",
         f"written: {record['folder']}",
         f"next: starcount fit {record['folder']}",

@@ -170,7 +170,8 @@ class _Reader:
         self.known_keys(name, given, {"value", "error", "prior", "lower", "upper", "reference"})
         lower = self.number(f"{name}.lower", given.get("lower", law.lower), law.lower, law.upper)
         upper = self.number(f"{name}.upper", given.get("upper", law.upper), law.lower, law.upper)
-        if not lower < upper:
+        lower, upper = (b if math.isnan(a) else a for a, b in ((lower, law.lower), (upper, law.upper)))
+        if lower >= upper:
             self.wrong(name, f"support from {lower:g} to {upper:g}", "lower < upper")
         value = self.choice(f"{name}.value", given.get("value"), law, lower, upper)
         error = self.number(f"{name}.error", given.get("error", 0.0), 0.0, math.inf)

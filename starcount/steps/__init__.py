@@ -9,9 +9,10 @@ from pathlib import Path
 
 from starcount.errors import FailedChecks
 from starcount.galaxy import LAWS, published_names, read_galaxy
+from starcount.stars import BANDS
 from starcount.steps import folder, record
 from starcount.steps.record import Run
-from starcount.survey import read_survey, write_survey
+from starcount.survey import Survey, overlapping_fields, read_survey, write_survey
 
 __all__ = ["Run", "check", "count", "demo", "fit", "laws", "predict", "report"]
 
@@ -29,9 +30,15 @@ def stretch(progress: Progress, first: float, last: float) -> Progress:
     return lambda what, share: progress(what, first + (last - first) * share)
 
 
+def _read(survey: str | Path) -> Survey:
+    return read_survey(survey, bands=BANDS)
+
+
 def check(survey: str | Path) -> dict:
     """Read a survey with full checking; return what it holds. Raises ``Problems`` with everything that is wrong."""
-    return record.of_survey(read_survey(survey))
+    found = _read(survey)
+    pairs = [[f"{group}/{field}" for group, field in pair] for pair in overlapping_fields(found)]
+    return {**record.of_survey(found), "overlapping": pairs}
 
 
 def count(
@@ -51,8 +58,8 @@ def count(
     """
     from starcount.catalogue import count_catalogue
 
-    empty = read_survey(survey)
-    final = folder.run_path(f"{record.short_name(survey)}-counts") if out is None else folder.ours(Path(out))
+    empty = _read(survey)
+    final = folder.run_path(f"{record.short_name(survey)}-counts") if out is None else folder.new(Path(out))
     found = count_catalogue(
         catalogues,
         empty,
@@ -83,7 +90,7 @@ def _predict(survey, galaxy, values: Mapping[str, float], run: str) -> Run:
     from starcount.report import write_tables
 
     final = folder.run_path(run)
-    model = ForwardModel(read_survey(survey), read_galaxy(galaxy))
+    model = ForwardModel(_read(survey), read_galaxy(galaxy))
     prediction = predict_counts(model, values=values)
     options = {"galaxy": str(galaxy), "values": dict(values)}
     with folder.replaced(final) as part:
@@ -119,7 +126,7 @@ def fit(
 
     galaxy = galaxy or "default"
     final = folder.run_path(run or f"{record.short_name(survey)}-fit")
-    model = ForwardModel(read_survey(survey), read_galaxy(galaxy), FIT_ACCURACY)
+    model = ForwardModel(_read(survey), read_galaxy(galaxy), FIT_ACCURACY)
     settings = {"likelihood": likelihood, "draws": draws, "chains": chains, "seed": seed}
     switches = {"lf_curve": curve, "census": census, "derived": derived_quantities(model.galaxy)}
     posterior = fit_galaxy(model, free, **switches, **settings, progress=progress)

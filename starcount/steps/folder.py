@@ -44,6 +44,13 @@ def ours(final: Path) -> Path:
     return final
 
 
+def new(final: Path) -> Path:
+    """Return the path unless something stands there: outside our own folder nothing is ever replaced."""
+    if final.exists():
+        raise InputError(f"{final}: exists already; choose another name, or remove it first")
+    return final
+
+
 @contextmanager
 def replaced(final: Path) -> Iterator[Path]:
     """A new folder to write to, which becomes ``final`` when the block ends well and vanishes when it does not."""

@@ -6,6 +6,10 @@ SAME_EDGE_MAG = 1e-6
 """Two edges closer than this are the same: finer than any catalogue, coarser than rounding."""
 
 
+MOST_BINS = 10_000
+"""More bins than any survey has: a slip in the step, which would fill the memory."""
+
+
 def edges_from_range(start: float, stop: float, step: float) -> np.ndarray:
     """Edges (bin + 1,) from ``start`` to ``stop``; rounded so that 0.1 * 3 is 0.3."""
     return np.round(start + step * np.arange(round((stop - start) / step) + 1), 10)
@@ -18,6 +22,8 @@ def trouble_with_range(start: float, stop: float, step: float) -> str:
     if step <= 0.0 or stop <= start:
         return f"from {start:g} to {stop:g} in steps of {step:g}"
     steps = (stop - start) / step
+    if steps > MOST_BINS:
+        return f"{steps:.3g} bins, more than {MOST_BINS}"
     return "" if abs(steps - round(steps)) < SAME_EDGE_MAG else f"{steps:g} steps of {step:g}"
 
 
