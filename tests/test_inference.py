@@ -250,6 +250,18 @@ def test_stars_where_the_model_has_none_are_refused():
     assert not found["other"].used.any()
 
 
+def test_a_field_without_a_star_is_refused_where_many_are_expected():
+    """The catalogue does not cover it; a field that expects few stars may hold none."""
+    toy = toy_model(n_field=3)
+    counts = toy.groups[0].counts.copy()
+    counts[1] = 0
+    gone = replace(toy.groups[0], counts=counts)
+    with pytest.raises(InputError, match=r"not one star in field .*, where some \d+ are expected"):
+        model.fitted_groups(type("M", (), {"groups": (gone,), "census": None}), census=False)
+    few = replace(gone, lf=gone.lf * 1e-4)
+    assert model.fitted_groups(type("M", (), {"groups": (few,), "census": None}), census=False)
+
+
 # Mode and map
 
 

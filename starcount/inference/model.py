@@ -15,6 +15,9 @@ from starcount.inference.op import ExpectedCounts, Kernels, Luminosity
 from starcount.stars import M_EDGES_MAG
 from starcount.survey import overlapping_fields
 
+SURELY_STARS = 20.0
+"""A field that should hold this many stars and holds none was not covered: chance would do that once in 10^8."""
+
 CENSUS = "census"
 """The group of the local census; its rows scatter by Poisson noise."""
 
@@ -106,15 +109,27 @@ def fitted_groups(forward_model, census: bool) -> dict:
 def _with_stars(group):
     if group.counts is None or not group.used.any():
         raise InputError(f"group {group.name!r} holds no counts to fit; give it a counts table or leave it out")
-    none = group.used & (group.expected({}) <= 0.0)
+    expected = group.expected({})
+    none = group.used & (expected <= 0.0)
     impossible = np.argwhere(none & (group.counts > 0))
     if len(impossible):
         field, one = impossible[0]
         raise InputError(
-            f"group {group.name!r}: {group.counts[field, one]} stars in field {field}, bin {one}, where the model "
-            f"expects none (and {len(impossible) - 1} more such bins); leave these bins out of the counts"
+            f"group {group.name!r}: {group.counts[field, one]} stars in {_field_name(group, field)}, bin {one + 1}, "
+            f"where the model expects none (and {len(impossible) - 1} more such bins); leave these bins out of the counts"
+        )
+    seen, foreseen = (np.where(group.used, n, 0.0).sum(axis=1) for n in (group.counts, expected))
+    empty = np.flatnonzero((seen == 0) & (foreseen > SURELY_STARS))
+    if empty.size:
+        raise InputError(
+            f"group {group.name!r}: not one star in {_field_name(group, empty[0])}, where some "
+            f"{foreseen[empty[0]]:.0f} are expected (and {empty.size - 1} more such fields); leave out fields that the catalogue does not cover"
         )
     return replace(group, used=group.used & ~none)
+
+
+def _field_name(group, field: int) -> str:
+    return f"field {field + 1}" if group.group is None else f"field {group.group.fields.name[field]}"
 
 
 def _check(forward_model, chosen, groups) -> None:
