@@ -116,14 +116,15 @@ def _with_stars(group):
         field, one = impossible[0]
         raise InputError(
             f"group {group.name!r}: {group.counts[field, one]} stars in {_field_name(group, field)}, bin {one + 1}, "
-            f"where the model expects none (and {len(impossible) - 1} more such bins); leave these bins out of the counts"
+            f"where the model expects none (and {len(impossible) - 1} more such bins); leave these bins out"
         )
     seen, foreseen = (np.where(group.used, n, 0.0).sum(axis=1) for n in (group.counts, expected))
     empty = np.flatnonzero((seen == 0) & (foreseen > SURELY_STARS))
     if empty.size:
         raise InputError(
             f"group {group.name!r}: not one star in {_field_name(group, empty[0])}, where some "
-            f"{foreseen[empty[0]]:.0f} are expected (and {empty.size - 1} more such fields); leave out fields that the catalogue does not cover"
+            f"{foreseen[empty[0]]:.0f} are expected (and {empty.size - 1} more such fields); "
+            "leave out fields that the catalogue does not cover"
         )
     return replace(group, used=group.used & ~none)
 
