@@ -16,12 +16,12 @@ from dataclasses import dataclass
 import numpy as np
 from scipy import linalg
 
-FOLDED_MOST = 0.005
+FOLDED_MOST = 0.001
 """The curvature is softened until no more of a standard normal's draws than this lie beyond a fold of the map."""
 
 _SOFTER = 0.8
 _STEPS = 30
-_PROBES = 400
+_PROBES = 2000
 
 
 @dataclass(frozen=True, eq=False)
