@@ -21,7 +21,7 @@ from starcount.inference import compat
 from starcount.inference.quadratic_map import QuadraticMap
 from starcount.inference.target import Target
 
-TARGET_ACCEPT = 0.85
+TARGET_ACCEPT = 0.88
 SAMPLER = "NUTS in mapped coordinates (nutpie)"
 _POLL_S = 0.2
 _STEPS_A_DRAW = 7.0  # leapfrog steps of a nearly normal posterior: what the progress is reckoned by

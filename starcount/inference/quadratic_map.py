@@ -16,8 +16,11 @@ from dataclasses import dataclass
 import numpy as np
 from scipy import linalg
 
-FOLDED_MOST = 0.001
-"""The curvature is softened until no more of a standard normal's draws than this lie beyond a fold of the map."""
+NEAR_FOLD_MOST = 0.001
+"""The curvature is softened until no more of a standard normal's draws than this come near a fold of the map."""
+
+NEAR_FOLD = 0.7
+"""How far along the way to a fold is near: trajectories reach beyond the draws, and end where they meet a fold."""
 
 _SOFTER = 0.8
 _STEPS = 30
@@ -66,7 +69,7 @@ def _softening(S: np.ndarray, rng: np.random.Generator) -> float:
     reach = np.array([_fold_reach(S, one) for one in z])
     factor = 1.0
     for _ in range(_STEPS):
-        if np.mean(factor * reach >= 1.0) <= FOLDED_MOST:
+        if np.mean(factor * reach >= NEAR_FOLD) <= NEAR_FOLD_MOST:
             return factor
         factor *= _SOFTER
     return 0.0
