@@ -10,5 +10,11 @@ DEG2_SR = (3.141592653589793 / 180.0) ** 2
 REFERENCE_WINDOW_MV_MAG = (4.5, 8.5)
 """The absolute magnitudes, in Johnson V, over which every population of discs and halo is normalised."""
 
-STAR_CLASSES = ("dwarf", "evolved", "white dwarf")
+STAR_CLASSES = ("dwarf", "subgiant", "red giant", "clump", "horizontal branch", "white dwarf")
 """The classes of stars that luminosity functions keep apart."""
+
+EVOLVED_CLASSES = STAR_CLASSES[1:5]
+"""The four classes that the one word "evolved" stands for, in a layer's ``classes`` and in tables."""
+
+CLASS_WORDS = (*STAR_CLASSES, "evolved")
+"""What a class of stars may be called in a file."""

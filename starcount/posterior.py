@@ -3,8 +3,8 @@
 import json
 import os
 import tempfile
-from collections.abc import Mapping
-from dataclasses import dataclass, replace
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
@@ -12,7 +12,7 @@ import xarray as xr
 from astropy.table import Table
 
 from starcount.errors import FailedChecks, InputError, UnknownName
-from starcount.stars import M_EDGES_MAG
+from starcount.forward.knots import KNOTS_MAG
 
 FORMAT = 1
 SUMMARY_QUANTILES = (0.025, 0.16, 0.5, 0.84, 0.975)
@@ -103,22 +103,21 @@ class Posterior:
         name = f"floor.{group}"
         return self.draws(name) if name in self.tree["posterior"] else np.zeros(self.size)
 
-    def luminosity_function(self, lf: np.ndarray, components, index: int) -> np.ndarray:
-        """Return ``lf`` (layer, class, cell) with the curves of one draw; ``components`` are the layers' components."""
-        middle = 0.5 * (M_EDGES_MAG[1:] + M_EDGES_MAG[:-1])
-        curves: Mapping[str, list[str]] = json.loads(self.tree.attrs["curves"])
-        corrected = np.array(lf, float)
-        for name, members in curves.items():
-            knots = self.tree["posterior"]["knot_mag"].values
-            factor = np.exp(np.interp(middle, knots, self.draws(f"curve.{name}")[index]))
-            corrected[[component in members for component in components]] *= factor
-        return corrected
+    def curve_factors(self, components: Sequence[str], index: int) -> np.ndarray:
+        """Return the factors (layer, knot) that the curves of one draw put on the luminosity functions.
 
-    def expected_parts(self, group_model, index: int) -> dict[str, np.ndarray]:
-        """Return the counts expected of one draw, by component and extra row: (field, bin) each."""
-        components = [component.name for component, _ in group_model.galaxy.layers]
-        lf = self.luminosity_function(group_model.lf, components, index)
-        return replace(group_model, lf=lf).expected(self.values(index), parts=True)
+        ``components`` are the names of the layers' components; layers without a curve have 1.
+        """
+        curves: Mapping[str, list[str]] = json.loads(self.tree.attrs["curves"])
+        factors = np.ones((len(components), KNOTS_MAG.size))
+        for name, members in curves.items():
+            factors[[component in members for component in components]] = np.exp(self.draws(f"curve.{name}")[index])
+        return factors
+
+    def at_draw(self, group_model, index: int, parts: bool = False):
+        """Return the counts (field, bin) expected of one draw, or with ``parts`` by component and extra row."""
+        factors = self.curve_factors([component.name for component, _ in group_model.galaxy.layers], index)
+        return group_model.expected(self.values(index), factors=factors, parts=parts)
 
     def summary(self) -> Table:
         """Return mean, sd, quantiles, r-hat, effective sizes and what is left of the prior's width, by quantity."""

@@ -75,37 +75,63 @@ def single_lines(fields):
     return SightLines(fields.l_deg, fields.b_deg, fields.area_deg2 * (np.pi / 180) ** 2, np.arange(n + 1))
 
 
-def predictions(n_field):
-    """Expected counts and gradients of a whole sky of small fields."""
+def sky(n_field, edges_mag, above_deg=0.0, **more):
+    """Small fields evenly over the sky, at least ``above_deg`` from the plane."""
     from dataclasses import replace
 
-    pixel = np.linspace(0, 12 * 32**2 - 1, n_field).astype(int)
-    fields = pixel_fields([f"p{i}" for i in range(n_field)], 32, pixel, "galactic", "ring")
-    group = make_group("sky", "G", np.arange(10.0, 22.1, 0.5), fields)
-    group = replace(group, sight_lines=single_lines(fields))
-    galaxy = read_galaxy()
+    fields = pixel_fields([f"p{i}" for i in range(12 * 32**2)], 32, np.arange(12 * 32**2), "galactic", "ring")
+    chosen = np.flatnonzero(np.abs(fields.b_deg) >= above_deg)
+    chosen = chosen[np.linspace(0, chosen.size - 1, min(n_field, chosen.size)).astype(int)]
+    fields = pixel_fields([f"p{i}" for i in chosen], 32, chosen, "galactic", "ring")
+    return replace(make_group("sky", "G", edges_mag, fields, **more), sight_lines=single_lines(fields))
+
+
+def predictions(n_field):
+    """Expected counts and gradients of a whole sky of small fields."""
+    group, galaxy = sky(n_field, np.arange(10.0, 22.1, 0.5)), read_galaxy()
     start = time.perf_counter()
     model = make_group_model(group, galaxy)
-    prepared = time.perf_counter() - start
     projection, v, W = model.projection, galaxy.vector(), model.luminosity_matrix()
+    prepared = time.perf_counter() - start
     n_node, n_layer, n_y = projection.lines.d_kpc.size, len(galaxy.layers), projection.y_mag.size
     sech = sum(layer.settings.get("vertical", 0.0) > 0 for _, layer in galaxy.layers)
     functions = (n_layer + sech, sech + 1, 2)  # halo: one log; bar and R: one root each
-    grid = np.random.default_rng(1).random((32, n_y * n_layer))
+    grid = np.random.default_rng(1).random((32, W.shape[0]))
     value = best(lambda: projection.counts(v, W))
     cotangent = np.ones((n_field, W.shape[1]))
     gradient = best(lambda: projection.pull_back(v, W, cotangent, want_W=False)) + value
     vector = best(lambda: floor_functions(n_node // n_field, n_field, *functions))
     products = best(lambda: floor_products(grid, W, n_field))
     flop = 2.0 * n_field * W.size
-    print(
-        f"{n_field} fields x {W.shape[1]} bins, {n_layer} layers, {n_node / n_field:.0f} nodes a line, {n_y} steps in y"
-    )
+    rows = f"{n_layer} layers in {len(model.rows.layer)} rows"
+    print(f"{n_field} fields x {W.shape[1]} bins, {rows}, {n_node / n_field:.0f} nodes a line, {n_y} steps in y")
     print(f"prepared in {prepared:.1f} s (lines settled to 1e-4)")
     parts = f"functions {1e3 * vector:.0f}, products {1e3 * products:.0f} at {flop / products / 1e9:.0f} Gflop/s"
     print(f"expected counts {1e3 * value:.0f} ms; floor {1e3 * (vector + products):.0f} ms ({parts})")
     print(f"  expected counts / floor: {value / (vector + products):.2f}")
     print(f"  value and gradient / value: {gradient / value:.2f}")
+
+
+def colours(n_field):
+    """16 x 8 bins of magnitude and colour against the 16 of magnitude only."""
+    edges, galaxy = np.linspace(12.0, 20.0, 17), read_galaxy()
+    pair = {"colour": ("BP", "RP"), "edges_colour_mag": np.linspace(0.0, 4.0, 9)}
+    for where, above_deg in (("all sky", 0.0), ("|b| > 30", 30.0)):
+        times, gradients = [], []
+        for more in ({}, pair):
+            start = time.perf_counter()
+            model = make_group_model(sky(n_field, edges, above_deg, **more), galaxy)
+            v, W, projection = galaxy.vector(), model.luminosity_matrix(), model.projection
+            prepared = time.perf_counter() - start
+            times.append(best(lambda p=projection, v=v, W=W: p.counts(v, W), 3))
+            cotangent = np.ones((projection.n_field, W.shape[1]))
+            back = best(lambda p=projection, v=v, W=W, c=cotangent: p.pull_back(v, W, c, want_W=False), 3)
+            gradients.append(back + times[-1])
+        slabs = model.matrix.n_slab
+        print(f"colour, {where}: {projection.n_field} fields, {slabs} slabs, prepared in {prepared:.1f} s, "
+              f"{1e3 * times[1]:.0f} ms")  # fmt: skip
+        print(f"  16 x 8 / 16 bins: {times[1] / times[0]:.1f}")
+        print(f"  value and gradient in colour / value: {gradients[1] / times[1]:.2f}")
 
 
 def commands():
@@ -119,5 +145,7 @@ def commands():
 
 if __name__ == "__main__":
     with threadpool_limits(1):
-        predictions(int(sys.argv[1]) if len(sys.argv) > 1 else 12288)
+        n_field = int(sys.argv[1]) if len(sys.argv) > 1 else 12288
+        predictions(n_field)
+        colours(n_field)
     commands()

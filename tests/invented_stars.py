@@ -51,6 +51,12 @@ def write_csv(path: Path, text: str) -> Path:
     return path
 
 
+def pixels_of(stars: Table, nside: int) -> np.ndarray:
+    """Galactic pixels (star,), numbered by rings, by astropy's frames and astropy-healpix."""
+    place = SkyCoord(stars["ra"], stars["dec"], frame="icrs").galactic
+    return astropy_healpix.lonlat_to_healpix(place.l, place.b, nside, order="ring")
+
+
 def brute_force(stars: Table, fields: Fields, edges_mag=EDGES_MAG) -> np.ndarray:
     """Counts (field, bin) the slow way: astropy's frames and separations, astropy-healpix, numpy's histogram."""
     places = SkyCoord(stars["ra"], stars["dec"], frame="icrs")

@@ -65,7 +65,10 @@ BAD_CALLS = {
     "cut kind": ({"cuts": ["kind < 1"]}, r"column 'kind': holds text; expected a number column"),
     "cut grammar": ({"cuts": ["ruwe = 1"]}, r"cut 'ruwe = 1': expected one comparison"),
     "half a position": ({"columns": {"l": "ra"}}, r"columns named for l; expected both l and b, or both ra and dec"),
-    "unknown key": ({"columns": {"magnitude": "Gmag"}}, r"no key for a column called 'magnitude'; known: b, dec, l"),
+    "unknown key": (
+        {"columns": {"magnitude": "Gmag"}},
+        r"no key for a column called 'magnitude'; known: b, blue, colour, dec, l",
+    ),
     "unknown group": ({"group": "faint"}, r"no group in the survey called 'faint'; known: stars"),
     "other unit": ({"columns": {"unit": "rad"}}, r"column 'ra': unit 'deg'; expected no other unit given \('rad'\)"),
 }

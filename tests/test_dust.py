@@ -9,8 +9,8 @@ import pytest
 from numpy.testing import assert_allclose
 from scipy.integrate import quad
 
-from starcount.dust import D0, DUST, A_V_mag, band_coefficient
-from starcount.errors import InputError, UnknownName
+from starcount.dust import D0, DUST, A_V_mag
+from starcount.errors import InputError
 from starcount.galaxy import read_galaxy
 
 # A_V of the disc with these parameters by the trapezium rule on 40 000 nodes: l, b, then 0.5, 1, 2, 4, 8, 8.2, 20 kpc.
@@ -200,18 +200,3 @@ def test_entries_a_model_cannot_work_with_are_refused(field, profiles, message):
     """The error names the field or profile, what was given and what is expected."""
     with pytest.raises(InputError, match=message):
         A_V_mag(*sky(**field), DISTANCES, profiles)
-
-
-def test_band_coefficients():
-    """V is 1; G is that of a 5400 K dwarf behind A_0 = 1 mag in the Gaia EDR3 law, whose A_V / A_0 is 1 to 0.2 %.
-
-    The polynomial in x = Teff / 5040 K (G, main sequence; Fitzpatrick 2019, R_V = 3.1) is printed on the ESA page.
-    """
-    x = 5400 / 5040
-    thin = 0.259021858973784 + 0.93676111876298 * x - 0.437446499585492 * x**2 + 0.0783508476444952 * x**3
-    column = -0.00136127433235224 + 0.000797222688660053 - 2.52364537395233e-05
-    mixed = -0.029981504413869 * x + 0.00555506017434798 * x**2 + 0.000402778419603886 * x
-    assert band_coefficient("V") == 1.0
-    assert_allclose(band_coefficient("G"), thin + column + mixed, atol=0.005)  # two digits are kept
-    with pytest.raises(UnknownName, match="known: G, V"):
-        band_coefficient("K")

@@ -12,10 +12,11 @@ from numpy.testing import assert_allclose
 from scipy.integrate import quad
 
 from starcount import stars
-from starcount.dust import band_coefficient
+from starcount.dust import band_coefficients
 from starcount.forward import ForwardModel, census_density_pc3, derived_quantities, layer_functions, sphere_means
 from starcount.forward import nodes as nodes_module
 from starcount.forward.kernels import luminosity, luminosity_back, stars_on_grid
+from starcount.forward.knots import KNOTS_MAG
 from starcount.forward.nodes import place_nodes
 from starcount.galaxy import read_galaxy
 
@@ -33,7 +34,7 @@ def default():
 def sky(default):
     """Eight small fields in the default Galaxy."""
     fields = skies.circles([0, 10, 90, 180, 270, 30, 200, 0], [90, -6, 45, -20, 3, -60, 12, -35], 0.4)
-    return ForwardModel(skies.survey(fields, EDGES, "G"), default)
+    return ForwardModel(skies.survey(fields, EDGES, "G"), default, dust_range=2.0)
 
 
 @pytest.mark.parametrize(("l", "b"), [(0, 90), (0, -30), (40, 10), (180, -25), (320, -4), (100, 2)])
@@ -44,9 +45,9 @@ def test_the_twin_agrees(default, l, b, band):
     edges = np.array([7.0, 8.0, 12.0, 12.5, 18.0, 18.5, 20.0])
     group = ForwardModel(skies.survey(fields, edges, band), default).groups[0]
     found = group.expected()[0]
-    wanted = twin.expected(
-        default, group.lf, stars.M_EDGES_MAG, l, b, fields.area_deg2[0], edges, band_coefficient(band)
-    )
+    table = group.tables.whole[..., 0]
+    coefficients = band_coefficients(band) if table.shape[1] == 3 else band_coefficients(band)[:1]
+    wanted = twin.expected(default, table, stars.M_EDGES_MAG, l, b, fields.area_deg2[0], edges, coefficients)
     assert_allclose(found, wanted, rtol=1e-4)
 
 
@@ -57,7 +58,7 @@ def test_uniform_space():
     group = ForwardModel(skies.survey(skies.circles(0, 90, 1.0, **NO_DUST), edges), galaxy).groups[0]
     found = group.expected()[0]
     # The nearest nodes, at 2.5 pc, do not miss stars brighter than M = 12, and fainter ones do not matter here.
-    lf = group.lf.sum(axis=(0, 1))
+    lf = group.tables.lf.sum(axis=(0, 1))
     middle = (stars.M_EDGES_MAG[1:] + stars.M_EDGES_MAG[:-1]) / 2
     cube = 1e3 * 10 ** (0.6 * (edges[:, None] - middle))  # pc^3 out to which a star of M is brighter than m
     brighter = 1e-3 * group.group.fields.area_deg2[0] * (np.pi / 180) ** 2 / 3 * (lf * cube).sum(axis=1)
@@ -72,7 +73,7 @@ def test_exponential_disc_at_the_pole():
     galaxy = skies.galaxy("disc", [2.6, h_pc / 1e3, 0, 1000, 1, 0], value=1e-3, z0_kpc=0.0)
     fields = skies.circles([0, 0], [90, -90], 0.5, **NO_DUST)
     group = ForwardModel(skies.survey(fields, np.array([-40.0, 60.0])), galaxy).groups[0]
-    stars_per_window = group.lf.sum()
+    stars_per_window = group.tables.lf.sum()
     # R grows as d sin(0.5 deg): negligible; the closest star is at 2.5 pc, (2.5 / 300)^3 / 6 of the integral.
     wanted = 1e-3 * stars_per_window * fields.area_deg2 * (np.pi / 180) ** 2 * 2 * h_pc**3
     assert_allclose(group.expected()[:, 0], wanted, rtol=2e-4)
@@ -171,29 +172,40 @@ def test_blocks_and_threads_do_not_matter(default):
 @given(seed=st.integers(0, 2**31))
 @settings(max_examples=30, derandomize=True, deadline=None)
 def test_the_luminosity_matrix_and_its_transpose(seed):
-    """<L lf, g> = <lf, L^T g>, with edges inside and outside the cells, classes apart and a response."""
+    """<L f, g> = <f, L^T g> for factors f on the functions."""
     rng = np.random.default_rng(seed)
-    n_bin = int(rng.integers(1, 6))
-    low = rng.uniform(-15, 30, n_bin)
-    arrays = (np.linspace(0, 12, 7), np.array([-8.0, 20.0]), low, low + rng.uniform(0.1, 5, n_bin),
-              rng.integers(-1, 3, n_bin), rng.normal(size=(n_bin, 4)))  # fmt: skip
-    lf, g = rng.normal(size=(2, 3, 600)), rng.normal(size=(14, 4))
-    assert_allclose(
-        np.vdot(luminosity(lf, *arrays), g), np.vdot(lf, luminosity_back(g, lf.shape, *arrays)), rtol=1e-9, atol=1e-9
-    )
+    n_row, n_bin, n_piece = (int(n) for n in rng.integers(1, 6, 3))
+    owner, first = rng.integers(0, 3, n_row), rng.integers(0, 10 - n_piece + 1, (n_row, n_bin))
+    pieces, f, g = rng.normal(size=(n_row, n_bin, n_piece)), rng.normal(size=(3, 10)), rng.normal(size=(n_row, n_bin))
+    back = luminosity_back(g, f.shape, owner, first, pieces)
+    assert_allclose(np.vdot(luminosity(f, owner, first, pieces), g), np.vdot(f, back), rtol=1e-9, atol=1e-9)
 
 
 def test_the_luminosity_matrix_against_its_plain_twin(default):
-    """A few lines of numpy: differences of the interpolated cumulative function; equal to rounding."""
-    lf = layer_functions(default, "V")
-    y, edges = np.array([3.0, 7.33, 12.1]), np.array([5.0, 8.02, 15.5])
-    arrays = (y, np.array([-8.0, 20.0]), edges[:-1], edges[1:], np.array([-1, 1]), np.eye(2))
-    found = luminosity(lf, *arrays).reshape(3, len(lf), 2)
-    for k, layer in enumerate(lf):
-        for t, cells in enumerate((layer.sum(axis=0), layer[1])):
-            below = np.concatenate([[0.0], np.cumsum(cells)])
-            at = np.interp(edges[t : t + 2] - y[:, None], stars.M_EDGES_MAG, below)
-            assert_allclose(found[:, k, t], at[:, 1] - at[:, 0], rtol=1e-9, atol=1e-12)
+    """Without errors: differences of the interpolated cumulative function at the bins' edges; equal to rounding."""
+    edges = np.array([5.0, 8.02, 15.5])
+    group = ForwardModel(skies.survey(skies.circles(0, 60), edges, "V"), default).groups[0]
+    found = group.luminosity_matrix().reshape(group.projection.y_mag.size, -1, 2)
+    for row, layer in enumerate(group.rows.layer):
+        below = np.concatenate([[0.0], np.cumsum(group.tables.lf[layer].sum(axis=0))])
+        at = np.interp(edges - group.projection.y_mag[:, None], stars.M_EDGES_MAG, below)
+        assert_allclose(found[:, row], np.diff(at, axis=1), rtol=1e-9, atol=1e-11)
+
+
+def test_factors_on_the_luminosity_functions(default):
+    """Ones change nothing (rounding); factors on one component change that component, as a straight line in M_V."""
+    group = ForwardModel(skies.survey(skies.circles(0, 60), EDGES, "V"), default).groups[0]
+    factors = np.ones((len(default.layers), KNOTS_MAG.size))
+    assert_allclose(group.luminosity_matrix(factors), group.luminosity_matrix(), rtol=1e-12, atol=1e-16)
+    thick = [c.name == "thick" for c, _ in default.layers]
+    factors[thick] = 1.0 + 0.1 * (KNOTS_MAG - KNOTS_MAG[0])
+    middle = (stars.M_EDGES_MAG[1:] + stars.M_EDGES_MAG[:-1]) / 2
+    tilted = group.tables.lf[thick] * np.clip(1.0 + 0.1 * (middle + 2.0), 1.0, 2.8)
+    y, rows = group.projection.y_mag, np.isin(group.rows.layer, np.flatnonzero(thick))
+    found = group.luminosity_matrix(factors).reshape(y.size, -1, EDGES.size - 1)[:, rows].sum(axis=1)
+    below = np.concatenate([[0.0], np.cumsum(tilted.sum(axis=(0, 1)))])
+    wanted = np.diff(np.interp(EDGES - y[:, None], stars.M_EDGES_MAG, below), axis=1)
+    assert_allclose(found, wanted, rtol=1e-6, atol=1e-9)
 
 
 def test_counts_scale_and_add(sky, default):

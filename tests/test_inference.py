@@ -12,6 +12,7 @@ from scipy import special, stats
 from toy_sky import KERNELS, toy_model
 
 from starcount.errors import InputError, UnknownName
+from starcount.forward.knots import KNOTS_MAG, hat
 from starcount.galaxy.component import Parameter
 from starcount.inference import curve, likelihoods, mode, model, priors, quadratic_map
 from starcount.inference.cut_normal import CutQuantile, cut_quantile
@@ -41,7 +42,8 @@ def test_gradients_of_the_operations_are_those_of_differences(mode):
     """Central differences of step 1e-5 agree to 1e-7: their own error; compiled, and called from Python."""
     group = toy_model(n_field=3, n_bin=3).groups[0]
     v, scale, dust = pt.dvector(), pt.dscalar(), pt.dvector()
-    W = Luminosity(KERNELS)(group.lf * pt.exp(scale), *group.lf_arrays)
+    factors = pt.exp(scale * pt.arange(2 * KNOTS_MAG.size).reshape((2, -1)) / 20.0)
+    W = Luminosity(KERNELS)(factors, group.matrix.layer, *group.matrix.pieces)
     counts = ExpectedCounts(KERNELS, fixed_luminosity=False)(v, W, dust, *group.projection.arrays)
     weights = np.random.default_rng(0).normal(size=group.used.shape)
     cost = pt.sum(counts * weights)
@@ -67,7 +69,7 @@ def test_operations_know_the_code_of_their_kernels():
 def test_data_of_the_model_keep_all_bits():
     """Addresses of compiled laws need 64 bits; PyMC's own data container would keep 32."""
     built = model.build_model(toy_model(), kernels=KERNELS)
-    assert {v.dtype for v in built.data_vars if "lf0" in v.name} == {"int64"}
+    assert {v.dtype for v in built.data_vars if "luminosity0" in v.name} == {"int64"}
 
 
 # Likelihoods
@@ -191,7 +193,7 @@ def test_a_curve_is_zero_on_average_over_the_reference_window():
     disc, old = curve.curves(parts := components("thin", "thin", "thick", "bulge"), M_EDGES_MAG)
     middle = 0.5 * (M_EDGES_MAG[1:] + M_EDGES_MAG[:-1])
     inside = (middle > 4.5) & (middle < 8.5)
-    assert_allclose((curve.hat(middle[inside]) @ disc.spread).mean(axis=0), 0.0, atol=1e-14)
+    assert_allclose((hat(middle[inside]) @ disc.spread).mean(axis=0), 0.0, atol=1e-14)
     assert (disc.components, old.components) == (("thin",), ("thick",))
     assert list(curve.owners((disc, old), parts)) == [1, 1, 2, 0]
 

@@ -14,8 +14,8 @@ from starcount.survey.frames import pixel_places, separation_deg
 EDGES_MAG = np.array([10.0, 11.0, 12.0, 13.0])
 
 
-def group(fields, name="g", band="G", edges_mag=EDGES_MAG, used=None):
-    return make_group(name, band, edges_mag, fields, used=used)
+def group(fields, name="g", band="G", edges_mag=EDGES_MAG, used=None, **colour):
+    return make_group(name, band, edges_mag, fields, used=used, **colour)
 
 
 def survey(*groups):
@@ -102,6 +102,35 @@ def test_unused_bins_do_not_overlap():
     used = np.array([[True, True, False], [False, False, True]])
     assert overlapping_fields(group(fields, used=used)) == []
     assert len(overlapping_fields(group(fields, used=used | [False, True, False]))) == 1
+
+
+def in_colour(name, edges_colour_mag, colour=("BP", "RP"), used=None):
+    field = circle_fields(["a"], [0.0], [50.0], [1.0])
+    return group(field, name, colour=colour, edges_colour_mag=edges_colour_mag, used=used)
+
+
+def test_bins_of_one_colour_must_meet_in_colour_too():
+    """Blue and red bins hold different stars, half-open bins included; in another colour, or in none, they do not."""
+    blue, red = in_colour("blue", [-np.inf, 1.0]), in_colour("red", [1.0, 1.5, np.inf])
+    pair = [(("blue", "a"), ("red", "a"))]
+    assert overlapping_fields(survey(blue, red)) == []
+    assert overlapping_fields(survey(blue, in_colour("red", [0.9, np.inf]))) == pair
+    assert overlapping_fields(survey(blue, in_colour("red", [1.0, 2.0], ("BP", "G")))) == pair
+    assert overlapping_fields(survey(blue, group(blue.fields, "red"))) == pair
+
+
+def test_used_bins_count_in_magnitude_and_colour():
+    """Only bins in the same magnitude and colour, both used, hold the same stars: bin = 2 x m bin + colour bin."""
+    edges, used = [0.0, 1.0, 2.0], np.zeros((1, 6), bool)
+    used[0, 1] = True  # 10 to 11 mag, colours 1 to 2
+    one = in_colour("one", edges, used=used)
+    for b, meets in ((0, False), (1, True), (3, False)):
+        other = np.zeros((1, 6), bool)
+        other[0, b] = True
+        assert bool(overlapping_fields(survey(one, in_colour("other", edges, used=other)))) == meets
+    magnitudes = np.array([[False, True, True]])
+    assert overlapping_fields(survey(one, group(one.fields, "plain", used=magnitudes))) == []
+    assert overlapping_fields(survey(one, group(one.fields, "plain", used=~magnitudes))) != []
 
 
 def test_a_whole_sky_is_fast():

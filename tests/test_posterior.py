@@ -13,6 +13,7 @@ from numpy.testing import assert_allclose, assert_array_equal
 from toy_sky import KERNELS, TRUTH, toy_model
 
 from starcount.errors import FailedChecks, InputError, UnknownName
+from starcount.forward.knots import KNOTS_MAG
 from starcount.posterior import FORMAT, Posterior
 
 
@@ -23,9 +24,9 @@ def invented(passed=True):
         {
             "thin.h_z_kpc": (("chain", "draw"), draw),
             "floor.G": (("chain", "draw"), draw / 10),
-            "curve.disc": (("chain", "draw", "knot_mag"), np.log(2.0) * np.ones((2, 3, 2))),
+            "curve.disc": (("chain", "draw", "knot_mag"), np.log(2.0) * np.ones((2, 3, KNOTS_MAG.size))),
         },
-        {"knot_mag": [-2.0, 16.0]},
+        {"knot_mag": KNOTS_MAG},
     )
     names = ["thin.h_z_kpc", "floor.G"]
     ones = {key: ("quantity", np.ones(2)) for key in ("r_hat", "ess_bulk", "ess_tail", "prior_width_left")}
@@ -51,7 +52,7 @@ def test_draws_run_through_the_chains_one_after_the_other():
     """Draw 3 is the first of the second chain; sizes and values follow."""
     posterior = invented()
     assert_array_equal(posterior.draws("thin.h_z_kpc"), [0.30, 0.31, 0.32, 0.33, 0.34, 0.35])
-    assert posterior.draws("curve.disc").shape == (6, 2)
+    assert posterior.draws("curve.disc").shape == (6, 10)
     assert (posterior.size, posterior.names) == (6, ("thin.h_z_kpc", "floor.G"))
     assert posterior.values(3) == {"thin.h_z_kpc": 0.33}
 
@@ -70,16 +71,15 @@ def test_unknown_quantities_are_refused():
 
 def test_curves_correct_the_layers_of_their_components_only():
     """A curve of ln 2 doubles the thin disc and leaves the halo alone."""
-    toy = toy_model(n_field=2).groups[0]
-    corrected = invented().luminosity_function(toy.lf, ["thin", "halo"], 0)
-    assert_allclose(corrected[0], 2.0 * toy.lf[0])
-    assert_array_equal(corrected[1], toy.lf[1])
+    factors = invented().curve_factors(["thin", "halo"], 0)
+    assert_allclose(factors[0], 2.0)
+    assert_array_equal(factors[1], 1.0)
 
 
-def test_expected_parts_are_those_of_the_draw():
+def test_parts_are_those_of_the_draw():
     """Height of the draw, thin disc doubled by the curve, thick disc and galaxies not: by hand from the toy sky."""
     toy = toy_model(n_field=2, extra=5.0).groups[0]
-    parts = invented().expected_parts(toy, 4)
+    parts = invented().at_draw(toy, 4, parts=True)
     plain = toy.expected({"thin.h_z_kpc": 0.34}, parts=True)
     assert_allclose(parts["thin"], 2.0 * plain["thin"], rtol=1e-12)
     assert_allclose(parts["thick"], plain["thick"])

@@ -1,5 +1,8 @@
 """Prediction: sums, pulls, tails, quantiles and tables, against closed forms and hand-made numbers."""
 
+from dataclasses import replace
+from types import SimpleNamespace
+
 import invented_prediction as invented
 import numpy as np
 import pytest
@@ -7,7 +10,8 @@ from numpy.testing import assert_allclose
 from scipy import stats
 
 from starcount.errors import InputError
-from starcount.predict import draw_counts, predict_counts, tail_probability
+from starcount.predict import counts, draw_counts, predict_counts
+from starcount.tails import tail_probability
 
 
 @pytest.fixture(scope="module")
@@ -142,6 +146,15 @@ def test_posterior_quantiles_are_those_of_the_draws(from_posterior, model):
     assert row["predicted_97.5"] - row["predicted_2.5"] > row["expected_97.5"] - row["expected_2.5"]
 
 
+def test_large_groups_are_predicted_from_fewer_draws(model, monkeypatch):
+    """Of 240 bins 24 000 numbers hold 100 draws, and the table says so; never fewer than fifty."""
+    for most, number in ((24_000, 100), (1000, 50)):
+        monkeypatch.setattr(counts, "MOST_NUMBERS", most)
+        prediction = predict_counts(model, posterior=invented.posterior())
+        assert len(prediction.groups["all"].draws) == number
+        assert prediction.bins["all"].meta["draws"] == number
+
+
 def test_variance_of_a_field_total_adds_shared_errors_before_squaring(from_posterior):
     """The draws move all bins of a field together; floor and Poisson noise are each bin's own."""
     group = from_posterior.groups["all"]
@@ -170,6 +183,80 @@ def test_fitted_curves_enter_the_prediction(model):
     assert_allclose(ratio["halo"], 1.0, rtol=0.01)
     gain = doubled.groups["all"].draws - flat.groups["all"].draws
     assert_allclose(gain.mean(axis=0), model.groups[0].disc, rtol=0.02)
+
+
+@pytest.fixture(scope="module")
+def in_colour():
+    """Counts in magnitude and colour, and the model they were drawn from."""
+    survey = invented.survey(number=6, edges_colour_mag=invented.EDGES_COLOUR_MAG)
+    return survey, invented.model(survey)
+
+
+def test_rows_in_colour_are_flat_bins_with_their_limits(in_colour):
+    """Magnitude before colour: row (field 2, magnitude 7, colour 3) is that of the arrays; the ends are open."""
+    survey, model = in_colour
+    table, n = predict_counts(model).bins["all"], survey.groups[0].counts.reshape(6, 10, 10)
+    row = table[2 * 100 + 7 * 10 + 3]
+    assert table.colnames[:6] == ["field", "m_lo", "m_hi", "c_lo", "c_hi", "n"]
+    limits = [row[name].to_value("mag") for name in ("m_lo", "m_hi", "c_lo", "c_hi")]
+    assert_allclose(limits, [17.0, 18.0, 0.8, 1.1], rtol=1e-12)
+    assert row["n"] == n[2, 7, 3]
+    assert table["c_lo"][0].value == -np.inf
+    assert table["c_hi"][9].value == np.inf
+    assert table.meta["colour"] == ["BP", "RP"]
+
+
+def test_fields_in_colour_are_summed_over_all_bins(in_colour):
+    """A field's total knows nothing of colours; only rounding is allowed."""
+    survey, model = in_colour
+    fields = predict_counts(model).fields
+    assert fields["n"].tolist() == survey.groups[0].counts.sum(axis=1).tolist()
+    assert_allclose(fields["expected"], model.groups[0].expected(invented.TRUTH).sum(axis=1), rtol=1e-12)
+
+
+def test_worst_bins_name_their_colour(in_colour, model, survey):
+    """Groups with and without colour share one list: limits of the one, an empty name of the other."""
+    coloured_survey, coloured = in_colour
+    part = replace(coloured.groups[0], group=replace(coloured_survey.groups[0], name="coloured"))
+    both = SimpleNamespace(
+        survey=replace(survey, groups=(*survey.groups, part.group)), galaxy=model.galaxy, groups=(*model.groups, part)
+    )
+    worst = predict_counts(both).worst_bins(400)
+    named = np.asarray(worst["colour"]) == "BP-RP"
+    assert named.tolist() == [name == "coloured" for name in worst["group"]]
+    assert 0 < named.sum() < 400
+    assert np.isnan(worst["c_lo"][~named].value).all()
+    assert not np.isnan(worst["c_hi"][named].value).any()
+    assert "colour" not in predict_counts(model).worst_bins(3).colnames
+
+
+def test_classes_split_the_components(model):
+    """Nine dwarfs to one red giant, as the fake says, at given values and over draws; classes sum to the components."""
+    for prediction in (
+        predict_counts(model, classes=True),
+        predict_counts(model, posterior=invented.posterior(), draws=50, classes=True),
+    ):
+        table = prediction.bins["all"]
+        for component in ("thin disc", "halo"):
+            assert_allclose(table[f"{component} dwarf"], 0.9 * table[component], rtol=1e-10)
+            assert_allclose(table[f"{component} red giant"], 0.1 * table[component], rtol=1e-10)
+        assert [name for name in table.colnames if name.startswith("galaxies")] == ["galaxies"]
+    assert "halo dwarf" not in predict_counts(model).bins["all"].colnames
+
+
+def test_stars_outside_verified_ranges_are_a_caution_from_one_per_cent_on(survey):
+    """0.9 % is passed over, 3.2 % is said with its group, and an unknown share is no caution."""
+    for outside, said in ((None, 0), (0.009, 0), (0.032, 1)):
+        cautions = predict_counts(invented.model(survey, outside)).cautions()
+        assert len(cautions) == said
+    assert "group all: 3.2 % of the expected stars" in cautions[0]
+
+
+def test_progress_names_every_group(model):
+    """Preparing comes first, then a share is told for each group, none of them 1 before the end."""
+    told = []
+    predict_counts(model, progress=lambda what, share: told.append((what, share)))
+    assert told == [("preparing the sight lines", 0.0), ("predicting group all", 0.5)]
 
 
 def test_predicted_intervals_cover_counts_drawn_from_the_model():

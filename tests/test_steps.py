@@ -8,10 +8,10 @@ import pytest
 from astropy.table import QTable
 
 from starcount import steps
-from starcount.cli import main
+from starcount.cli import main, screen
 from starcount.errors import InputError, UnknownName
 from starcount.report import page
-from starcount.survey import read_survey
+from starcount.survey import Survey, circle_fields, make_group, read_survey, write_survey
 
 DEMO = Path(__file__).parents[1] / "fields" / "demo"
 
@@ -29,6 +29,50 @@ def test_check_says_what_a_survey_holds():
     survey = read_survey(DEMO)
     assert [group["stars"] for group in record["groups"]] == [int(group.counts.sum()) for group in survey.groups]
     assert [group["fields"] for group in record["groups"]] == [18, 6]
+
+
+@pytest.fixture
+def coloured():
+    """A survey of two fields in magnitude and colour, with counts of one star a bin; invented."""
+    fields = circle_fields(["low", "high"], [10.0, 200.0], [20.0, 70.0], [0.5, 0.5])
+    bins = {"colour": ("BP", "RP"), "edges_colour_mag": [-np.inf, 1.0, np.inf]}
+    group = make_group("one", "G", [12.0, 14.0, 16.0], fields, np.ones((2, 4), np.int64), **bins)
+    write_survey(Survey("Coloured", "Invented", True, (group,)), Path("coloured"))
+    return Path("coloured")
+
+
+def test_check_says_which_colour(coloured, capsys):
+    """Bands, number and limits of the colour bins, in lines and as JSON, where an open end is null."""
+    assert main(["check", str(coloured)]) == 0
+    assert "BP-RP, 2 from all bluer to all redder" in capsys.readouterr().out
+    colour = {"bands": ["BP", "RP"], "bins": 2, "c_lo_mag": None, "c_hi_mag": None}
+    assert steps.check(coloured)["groups"][0]["colour"] == colour
+    assert steps.check(DEMO)["groups"][0]["colour"] is None
+
+
+def test_predict_in_colour_by_class(coloured, capsys):
+    """A column for every class with stars, which sum to the components but for rounding; the screen names colours."""
+    assert main(["predict", str(coloured), "--classes", "--run", "split", "--json"]) == 0
+    result = json.loads(capsys.readouterr().out)["result"]
+    table = QTable.read(Path("outputs", "split", "predicted-one.ecsv"))
+    halo = [name for name in table.colnames if name.startswith("halo ")]
+    assert {"halo dwarf", "halo red giant"} <= set(halo)
+    np.testing.assert_allclose(sum(table[name] for name in halo), table["halo"], rtol=1e-9)
+    by_class = result["groups"]["one"]["classes"]["halo"]
+    np.testing.assert_allclose(by_class["red giant"], table["halo red giant"].sum(), rtol=1e-12)
+    assert {row["colour"] for row in result["worst_bins"]} == {"BP-RP"}
+    assert all(row["c_lo"] is None or row["c_hi"] is None for row in result["worst_bins"])
+    lines = screen.run_lines(json.loads(Path("outputs", "split", "run.json").read_text()))
+    assert any(line.startswith("expected of one") and "red giant" in line for line in lines)
+    assert any("BP-RP to 1" in line or "BP-RP from 1" in line for line in lines)
+
+
+def test_cautions_stand_on_the_screen():
+    """A caution of the prediction is a line of its own."""
+    group = {"expected": 1.0, "counted": None, "expected_of_counted": None, "classes": {}}
+    result = {"groups": {"one": group}, "worst_bins": [], "cautions": ["group one: 3 % of the stars"]}
+    lines = screen.run_lines({"result": result, "folder": "outputs/one", "run": "one"})
+    assert "caution: group one: 3 % of the stars" in lines
 
 
 def test_predict_writes_tables_that_equal_the_arrays():

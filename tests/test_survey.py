@@ -9,7 +9,9 @@ from numpy.testing import assert_allclose, assert_array_equal
 from survey_files import FIELDS, differences, lay_out
 
 from starcount.survey import (
+    ColourError,
     Completeness,
+    FaintBP,
     Observation,
     PhotometricError,
     Survey,
@@ -162,6 +164,7 @@ def surveys(draw):
 def group(draw, name):
     """One group."""
     edges_mag = np.array(sorted(draw(st.lists(magnitudes, min_size=2, max_size=5, unique=True))))
+    colour = draw(st.sampled_from([{}, {"colour": ("BP", "RP"), "edges_colour_mag": draw(colour_edges)}]))
     field_names = draw(st.lists(words, min_size=1, max_size=4, unique=True))
     n = len(field_names)
     columns = {"note": draw(st.lists(st.text(st.characters(exclude_categories=["C", "Z"])), min_size=n, max_size=n))}
@@ -174,24 +177,33 @@ def group(draw, name):
         frame, order = draw(st.sampled_from(["galactic", "icrs"])), draw(st.sampled_from(["ring", "nested"]))
         columns |= {"dust": "anchored", "A_V_mag": draw(st.floats(0.0, 9.0))}
         fields = pixel_fields(field_names, 16, pixel, frame, order, **columns)
-    shape = (n, edges_mag.size - 1)
+    shape = (n, (edges_mag.size - 1) * (len(colour["edges_colour_mag"]) - 1 if colour else 1))
     counts = np.arange(n * shape[1]).reshape(shape) if draw(st.booleans()) else None
     used = np.eye(*shape, dtype=bool) | (np.arange(shape[1]) == shape[1] - 1) if counts is not None else None
-    return make_group(name, draw(words), edges_mag, fields, counts, used, observation=draw(observations))
+    band = draw(words) if not colour else "G"
+    seen = draw(st.sampled_from([*OBSERVATIONS, *(OBSERVATIONS_IN_COLOUR if colour else ())]))
+    more = {"observation": seen, "resolution_arcsec": draw(st.sampled_from([None, 0.7]))}
+    return make_group(name, band, edges_mag, fields, counts, used, **colour, **more)
 
 
-wide = np.array([-60.0, 60.0])
-observations = st.sampled_from(
-    [
-        Observation(),
-        Observation(Completeness(wide, np.array([1.0, 0.3]))),
-        Observation(error=PhotometricError(wide, np.array([0.01, 0.1]), np.array([0.0, 0.2]))),
-    ]
+colour_edges = st.tuples(st.booleans(), st.lists(magnitudes, min_size=2, max_size=4, unique=True), st.booleans()).map(
+    lambda x: [-np.inf] * x[0] + sorted(x[1]) + [np.inf] * x[2]
+)
+wide, twice = np.array([-60.0, 60.0]), np.array([[0.1, 0.2], [0.3, 1.0]])
+OBSERVATIONS = (
+    Observation(),
+    Observation(Completeness(wide, np.array([1.0, 0.3]))),
+    Observation(error=PhotometricError(wide, np.array([0.01, 0.1]), np.array([0.0, 0.2]))),
+)
+OBSERVATIONS_IN_COLOUR = (
+    Observation(Completeness(wide, twice, np.array([0.0, 2.0]))),
+    Observation(colour_error=ColourError(wide, np.array([0.01, 0.1]), np.array([0.0, 0.2]))),
+    Observation(colour_error=ColourError(wide, -twice, twice, np.array([0.0, 2.0])), faint_BP=FaintBP(38.5, "G")),
 )
 
 
 @given(survey=surveys())
-@settings(max_examples=20, derandomize=True, deadline=None)
+@settings(max_examples=40, derandomize=True, deadline=None)
 def test_round_trip(tmp_path_factory, survey):
     """read(write(s)) equals s, for surveys of any shape."""
     folder = tmp_path_factory.mktemp("survey")

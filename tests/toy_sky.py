@@ -10,6 +10,7 @@ from types import SimpleNamespace
 import numpy as np
 from numba import njit
 
+from starcount.forward.knots import KNOTS_MAG, hat
 from starcount.galaxy.component import Parameter
 from starcount.stars import CLASSES, M_EDGES_MAG
 from starcount.survey import Survey, circle_fields, make_group
@@ -54,29 +55,32 @@ def project_back(v, W, ln_dust, cotangent, want_W, sin_b, d_kpc, weight, fading)
 
 
 @njit(nogil=True, error_model="numpy")
-def luminosity(lf, first_bin, n_bin):
-    W = np.zeros((2 * first_bin.shape[0], n_bin.size))
-    for j in range(first_bin.shape[0]):
-        for k in range(2):
-            for i in range(first_bin.shape[1]):
-                b = first_bin[j, i]
-                if 0 <= b < n_bin.size:
-                    for c in range(lf.shape[1]):
-                        W[2 * j + k, b] += lf[k, c, i]
+def luminosity(factors, owner, pieces):
+    """W (row, bin) from the factors (curve, knot) and the matrix of every knot (row, bin, knot)."""
+    W = np.zeros(pieces.shape[:2])
+    for i in range(pieces.shape[0]):
+        for k in range(pieces.shape[2]):
+            for b in range(pieces.shape[1]):
+                W[i, b] += factors[owner[i], k] * pieces[i, b, k]
     return W
 
 
 @njit(nogil=True, error_model="numpy")
-def luminosity_back(gW, shape, first_bin, n_bin):
+def luminosity_back(gW, shape, owner, pieces):
     g = np.zeros(shape)
-    for j in range(first_bin.shape[0]):
-        for k in range(2):
-            for i in range(first_bin.shape[1]):
-                b = first_bin[j, i]
-                if 0 <= b < n_bin.size:
-                    for c in range(shape[1]):
-                        g[k, c, i] += gW[2 * j + k, b]
+    for i in range(pieces.shape[0]):
+        for k in range(pieces.shape[2]):
+            for b in range(pieces.shape[1]):
+                g[owner[i], k] += gW[i, b] * pieces[i, b, k]
     return g
+
+
+def matrix(lf, first_bin, n_bin):
+    """W (distance x layer, bin) of functions (layer, class, cell) whose cells fall into bins (distance, cell)."""
+    W = np.zeros((first_bin.shape[0], len(lf), n_bin))
+    for b in range(n_bin):
+        W[:, :, b] = (first_bin == b) @ lf.sum(axis=1).T
+    return W.reshape(-1, n_bin)
 
 
 KERNELS = SimpleNamespace(
@@ -96,17 +100,27 @@ class ToyGroup:
     used: np.ndarray
     projection: SimpleNamespace
     lf: np.ndarray
-    lf_arrays: tuple
+    first_bin: np.ndarray
     extra_names: tuple
     extra: np.ndarray
 
-    def luminosity_matrix(self, lf=None):
-        """W (row, bin)."""
-        return luminosity(self.lf if lf is None else lf, *self.lf_arrays)
+    @property
+    def matrix(self):
+        """The layer of each row of the matrix, and the matrix of every knot."""
+        n = self.first_bin.shape[0]
+        pieces = [
+            matrix(self.lf * hat(MIDDLE)[:, k], self.first_bin, self.used.shape[1]) for k in range(KNOTS_MAG.size)
+        ]
+        return SimpleNamespace(layer=np.tile([0, 1], n), pieces=(np.ascontiguousarray(np.stack(pieces, axis=-1)),))
 
-    def expected(self, values=None, parts=False):
+    def luminosity_matrix(self, factors=None):
+        """W (row, bin)."""
+        factors = np.ones((2, KNOTS_MAG.size)) if factors is None else factors
+        return luminosity(factors, self.matrix.layer, *self.matrix.pieces)
+
+    def expected(self, values=None, *, factors=None, parts=False):
         """Counts expected (field, bin), or by component."""
-        v, W = self.galaxy.vector(values or {}), self.luminosity_matrix()
+        v, W = self.galaxy.vector(values or {}), self.luminosity_matrix(factors)
         found = {}
         for k, component in enumerate(("thin", "thick")):
             alone = np.where(np.arange(W.shape[0])[:, None] % 2 == k, W, 0.0)
@@ -131,7 +145,7 @@ def toy_group(name, galaxy, sin_b, edges_mag, per_kpc3, group=None, extra=0.0):
         used=np.ones(shape, bool),
         projection=SimpleNamespace(arrays=(sin_b, D_KPC, per_kpc3 * np.ones((sin_b.size, 1)) * D_KPC**3, fading)),
         lf=luminosity_functions(),
-        lf_arrays=(bins, np.zeros(shape[1])),
+        first_bin=bins,
         extra_names=names,
         extra=np.full((len(names), *shape), extra),
     )

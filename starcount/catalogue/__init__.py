@@ -45,20 +45,21 @@ def count_catalogue(
     """Return how many stars of one or more files each field and bin of a survey holds.
 
     paths: files, or folders of Parquet files. columns: {key: column} with the keys ``l``, ``b`` or ``ra``, ``dec``,
-    ``mag``, and ``unit`` of the angles; what is not named is looked for. cuts: comparisons such as "ruwe < 1.4", all of
-    which a star must pass. group: count into this group of the survey only. progress is called with (bytes read,
-    bytes in all). Bins are closed at the bright edge and open at the faint one; a star on a circle's rim is inside.
-    Raises InputError naming file, column, row or line. Memory: a few batches, and one set of counts per thread.
+    ``mag``, ``colour`` or ``blue``, ``red``, and ``unit`` of the angles; what is not named is looked for. cuts:
+    comparisons such as "ruwe < 1.4", all of which a star must pass. group: count into this group of the survey only.
+    progress is called with (bytes read, bytes in all). Bins are closed at the bright (blue) edge and open at the faint
+    (red) one; a star on a circle's rim is inside. Raises InputError naming file, column, row or line. Memory: a few
+    batches, and one set of counts per thread.
     """
     groups = [g for g in survey.groups if group in (None, g.name)]
     if not groups:
         raise UnknownName("group in the survey", group, tuple(g.name for g in survey.groups))
-    bands = [g.band for g in groups]
-    check_keys(columns or {}, bands)
+    bands, colours = [g.band for g in groups], [g.colour for g in groups]
+    check_keys(columns or {}, bands, colours)
     parsed = [parse_cut(cut) for cut in cuts]
     listed = [paths] if isinstance(paths, (str, Path)) else paths
     sources = [source for path in listed for source in open_catalogue(path)]
-    layouts = [find_layout(source, columns or {}, bands, parsed) for source in sources]
+    layouts = [find_layout(source, columns or {}, bands, colours, parsed) for source in sources]
     return count_sources(list(zip(sources, layouts, strict=True)), groups, parsed, progress)
 
 

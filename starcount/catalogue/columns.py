@@ -1,4 +1,4 @@
-"""Which columns of a star list hold position and magnitude: by the user's names, else by common names and units."""
+"""Which columns of a star list hold position, magnitude and colour: as the user names them, else by common names."""
 
 import difflib
 from collections.abc import Mapping, Sequence
@@ -8,30 +8,18 @@ import astropy.units as u
 import numpy as np
 
 from starcount.catalogue.cuts import Cut
+from starcount.catalogue.names import MAGNITUDE_NAMES, POSITION_NAMES, colour_names, spelling
 from starcount.catalogue.source import Source
 from starcount.errors import InputError, Problem, Problems, UnknownName
 
-POSITION_NAMES = (
-    ("galactic", "l", "b"),
-    ("galactic", "l_deg", "b_deg"),
-    ("galactic", "l_rad", "b_rad"),
-    ("galactic", "glon", "glat"),
-    ("icrs", "ra", "dec"),
-    ("icrs", "ra_deg", "dec_deg"),
-    ("icrs", "ra_rad", "dec_rad"),
-    ("icrs", "ra_icrs", "de_icrs"),
-    ("icrs", "raj2000", "dej2000"),
-)
-"""Pairs of names looked for, in this order, so Galactic before ICRS; capitals matter only in ``l``, ``b``."""
+KEYS = {
+    "l": "galactic", "b": "galactic", "ra": "icrs", "dec": "icrs", "unit": "",
+    "mag": "", "colour": "", "blue": "", "red": "",
+}  # fmt: skip
+"""What a user may name: two angles of one frame, the angles' unit where the file has none, the magnitude, and the
+colour or the magnitudes in its two bands."""
 
-MAGNITUDE_NAMES = {
-    "G": ("phot_g_mean_mag", "Gmag", "G"),
-    "V": ("Vmag", "V"),
-}
-"""Names looked for per band of the survey; capitals matter only in names of one letter: g and G are two bands."""
-
-KEYS = {"l": "galactic", "b": "galactic", "ra": "icrs", "dec": "icrs", "mag": "", "unit": ""}
-"""What a user may name: two angles of one frame, the magnitude, and the angles' unit where the file has none."""
+Colour = tuple[str, str] | None
 
 
 @dataclass(frozen=True)
@@ -45,21 +33,29 @@ class Position:
 
 @dataclass(frozen=True)
 class Layout:
-    """What is read from a star list: position, one magnitude column per group, and the columns of the cuts."""
+    """What is read from a star list: position, per group one magnitude and the colour, and the columns of the cuts.
+
+    A colour is one column, or two whose difference it is, or none where the group has no colour.
+    """
 
     position: Position
     magnitudes: tuple[str, ...]
+    colours: tuple[tuple[str, ...], ...]
     wanted: Mapping[str, str]
 
     @property
     def found(self) -> dict[str, str]:
-        """Return {key: column} as a user would name them; several magnitude columns joined by commas."""
+        """Return {key: column} as a user would name them; several columns for one key joined by commas."""
         keys = ("l", "b") if self.position.frame == "galactic" else ("ra", "dec")
-        return dict(zip(keys, self.position.names, strict=True)) | {"mag": ", ".join(dict.fromkeys(self.magnitudes))}
+        used = {"mag": self.magnitudes, "colour": [names[0] for names in self.colours if len(names) == 1]}
+        for i, key in enumerate(("blue", "red")):
+            used[key] = [names[i] for names in self.colours if len(names) == 2]
+        joined = {key: ", ".join(dict.fromkeys(names)) for key, names in used.items() if names}
+        return dict(zip(keys, self.position.names, strict=True)) | joined
 
 
-def check_keys(columns: Mapping[str, str], bands: Sequence[str]) -> None:
-    """Refuse keys that mean nothing, half a position, two positions, one magnitude for several bands."""
+def check_keys(columns: Mapping[str, str], bands: Sequence[str], colours: Sequence[Colour]) -> None:
+    """Refuse keys that mean nothing, half a position or colour, two of them, one column for several bands."""
     for key in columns:
         if key not in KEYS:
             raise UnknownName("key for a column", key, tuple(KEYS))
@@ -68,26 +64,41 @@ def check_keys(columns: Mapping[str, str], bands: Sequence[str]) -> None:
         raise InputError(f"columns named for {', '.join(angles)}; expected both l and b, or both ra and dec")
     if "mag" in columns and len(set(bands)) > 1:
         raise InputError(f"one magnitude column named for bands {', '.join(sorted(set(bands)))}; count group by group")
+    named = [key for key in ("colour", "blue", "red") if key in columns]
+    if named not in ([], ["colour"], ["blue", "red"]):
+        raise InputError(f"columns named for {', '.join(named)}; expected colour alone, or both blue and red")
+    different = sorted({"-".join(colour) for colour in colours if colour is not None})
+    if named and len(different) != 1:
+        held = f"colours {', '.join(different)}; count group by group" if different else "groups without a colour"
+        raise InputError(f"columns named for {', '.join(named)}, but the survey has {held}")
 
 
-def find_layout(source: Source, columns: Mapping[str, str], bands: Sequence[str], cuts: Sequence[Cut]) -> Layout:
+def find_layout(
+    source: Source,
+    columns: Mapping[str, str],
+    bands: Sequence[str],
+    colours: Sequence[Colour],
+    cuts: Sequence[Cut],
+) -> Layout:
     """Return the layout of a star list, or raise everything that is wrong with its columns at once.
 
-    A column that the user names wins. Without a unit an angle is taken in degrees (radians where its name ends in
-    ``_rad``) in CSV, and in Parquet that has no units at all; elsewhere a missing unit is refused.
+    ``bands`` and ``colours`` (two bands or None) of the groups. A column that the user names wins. Without a unit an
+    angle is taken in degrees (radians where its name ends in ``_rad``) in CSV, and in Parquet that has no units at all;
+    elsewhere a missing unit is refused.
     """
     problems: list[Problem] = []
     position = find_position(source, columns, problems)
     magnitudes = tuple(find_magnitude(source, columns.get("mag"), band, problems) for band in bands)
+    found = tuple(find_colour(source, columns, colour, problems) for colour in colours)
     wanted: dict[str, str] = {}
     want(source, wanted, position.names, "number", problems)
-    want(source, wanted, magnitudes, "number", problems)
+    want(source, wanted, [*magnitudes, *(name for names in found for name in names)], "number", problems)
     for cut in cuts:
         if present(source, cut.column, f"cut {cut.text!r}", problems):
             want(source, wanted, [cut.column], cut.kind, problems)
     if problems:
         raise Problems(*dict.fromkeys(problems))
-    return Layout(position, magnitudes, wanted)
+    return Layout(position, magnitudes, found, wanted)
 
 
 def find_position(source: Source, columns: Mapping[str, str], problems: list[Problem]) -> Position:
@@ -107,15 +118,8 @@ def find_position(source: Source, columns: Mapping[str, str], problems: list[Pro
 
 def spelled(source: Source, pairs: Sequence[tuple[str, str, str]]) -> list[tuple[str, str, str]]:
     """Return the pairs that the star list has, in its own spelling."""
-    found = ((frame, spelling(source, lon), spelling(source, lat)) for frame, lon, lat in pairs)
+    found = ((frame, spelling(source.columns, lon), spelling(source.columns, lat)) for frame, lon, lat in pairs)
     return [pair for pair in found if all(pair)]
-
-
-def spelling(source: Source, name: str) -> str | None:
-    """Return how the star list spells a name; single letters only exactly, since B is a band and b a latitude."""
-    if name in source.columns or len(name) == 1:
-        return name if name in source.columns else None
-    return next((own for own in source.columns if own.lower() == name.lower()), None)
 
 
 def find_magnitude(source: Source, named: str | None, band: str, problems: list[Problem]) -> str:
@@ -124,18 +128,51 @@ def find_magnitude(source: Source, named: str | None, band: str, problems: list[
         found = named if present(source, named, "magnitude", problems) else None
     else:
         known = MAGNITUDE_NAMES.get(band, ())
-        found = next(filter(None, (spelling(source, name) for name in known)), None)
+        found = first_of(source, known)
         if found is None:
-            allowed = f"{', '.join(known) or 'a name given'} or mag=COLUMN"
             problems.append(
-                Problem(str(source.path), f"magnitude in {band}", f"none of its columns {listed(source)}", allowed)
+                missing(source, f"magnitude in {band}", f"{', '.join(known) or 'a name given'} or mag=COLUMN")
             )
-    if found is not None and source.columns[found].unit is not None:
-        unit = parsed_unit(source.columns[found].unit)
-        if not (unit == u.mag or isinstance(unit, u.MagUnit)):
-            words = unit_words(source.columns[found].unit)
-            problems.append(Problem(str(source.path), f"column {found!r}", words, "mag"))
+    refuse_other_units(source, [found], problems)
     return found or ""
+
+
+def find_colour(source: Source, columns: Mapping[str, str], colour: Colour, problems: list[Problem]) -> tuple[str, ...]:
+    """Return the column of a colour, or the two whose difference it is: these if both are there, being exact."""
+    if colour is None:
+        return ()
+    named = [columns[key] for key in ("colour", "blue", "red") if key in columns]
+    pair = [first_of(source, MAGNITUDE_NAMES.get(band, ())) for band in colour]
+    if named:
+        found = [name for name in named if present(source, name, "colour", problems)]
+    elif all(pair):
+        found = pair
+    else:
+        found = [name for name in [first_of(source, colour_names(*colour))] if name is not None]
+        if not found:
+            known = [*(name for band in colour for name in MAGNITUDE_NAMES.get(band, ())), *colour_names(*colour)]
+            allowed = f"two of {', '.join(known)}, or colour=COLUMN, or blue=COLUMN and red=COLUMN"
+            problems.append(missing(source, f"colour {'-'.join(colour)}", allowed))
+    refuse_other_units(source, found, problems)
+    return tuple(found)
+
+
+def first_of(source: Source, known: Sequence[str]) -> str | None:
+    """Return the first of some names that the star list has, in its own spelling."""
+    return next(filter(None, (spelling(source.columns, name) for name in known)), None)
+
+
+def missing(source: Source, what: str, allowed: str) -> Problem:
+    return Problem(str(source.path), what, f"none of its columns {listed(source)}", allowed)
+
+
+def refuse_other_units(source: Source, names: Sequence[str | None], problems: list[Problem]) -> None:
+    """Refuse columns whose unit is something else than magnitudes; none at all is right."""
+    for name in names:
+        text = source.columns[name].unit if name is not None else None
+        unit = None if text is None else parsed_unit(text)
+        if text is not None and not (unit == u.mag or isinstance(unit, u.MagUnit)):
+            problems.append(Problem(str(source.path), f"column {name!r}", unit_words(text), "mag"))
 
 
 def present(source: Source, name: str, purpose: str, problems: list[Problem]) -> bool:

@@ -20,8 +20,16 @@ from starcount.errors import InputError, Problem, Problems
 WORKERS = min(4, os.cpu_count() or 1)
 """Threads that tally while the main one reads; more than four outrun the reading."""
 
-NO_POSITION, NO_MAGNITUDE = "position missing", "magnitude missing"
-OUTSIDE = ("outside the bins", "outside every field")
+NO_POSITION, NO_MAGNITUDE, NO_COLOUR = "position missing", "magnitude missing", "colour missing"
+OUTSIDE_BINS, OUTSIDE_COLOURS, OUTSIDE_FIELDS = "outside the bins", "outside the colour bins", "outside every field"
+STAGES = (NO_MAGNITUDE, OUTSIDE_BINS, NO_COLOUR, OUTSIDE_COLOURS, OUTSIDE_FIELDS)
+"""Why a row is dropped, by how far it came (as ``kernels`` numbers it)."""
+OF_COLOUR = (NO_COLOUR, OUTSIDE_COLOURS)
+"""Those that are reported only where a group has a colour."""
+
+DIFFERENCE_MAG = {"f4": 2e-6, "f8": 1e-9}
+"""A difference of two magnitudes may come out this much too blue by rounding, at most (two roundings of numbers below
+32, in the columns' precision): by so much it still opens the bin that begins at its decimals."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -50,7 +58,7 @@ class Tally:
 
     @classmethod
     def empty(cls, groups: Sequence, n_cut: int) -> "Tally":
-        shapes = [(len(group.fields.name), len(group.edges_mag) - 1) for group in groups]
+        shapes = [(len(group.fields.name), group.n_bin) for group in groups]
         # Reasons to exclude a row: none, no position, then two per cut.
         return cls(
             [np.zeros(shape, dtype=np.int64) for shape in shapes],
@@ -79,12 +87,16 @@ class Counter:
         tally.excluded[:] += np.bincount(excluded, minlength=tally.excluded.size)
         use = excluded == 0
         reached = np.zeros(len(use), dtype=np.uint8)
-        for group, name, looked_up, counts in zip(
-            self.groups, self.layout.magnitudes, self.tables, tally.counts, strict=True
+        layout = self.layout
+        for group, name, colour, looked_up, counts in zip(
+            self.groups, layout.magnitudes, layout.colours, self.tables, tally.counts, strict=True
         ):
             m_mag, edges = self.magnitudes(rows.column(name), group.edges_mag)
+            c_mag, colour_edges = self.colours([rows.column(column) for column in colour], group.edges_colour_mag)
             for table in looked_up:
-                kernels.count(lon_rad, lat_rad, m_mag, use, edges, *table.arrays, counts, reached)
+                kernels.count(
+                    lon_rad, lat_rad, m_mag, c_mag, use, edges, colour_edges, *table.arrays, counts, reached
+                )  # fmt: skip
         tally.reached[:] += np.bincount(reached[use], minlength=tally.reached.size)
 
     def positions(self, rows: pa.RecordBatch, first_row: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
@@ -101,7 +113,7 @@ class Counter:
 
     @staticmethod
     def magnitudes(column: pa.Array, edges_mag: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-        """Return magnitudes, NaN where there is none, and edges rounded to the precision of the column.
+        """Return magnitudes (or colours), NaN where there is none, and edges rounded to the precision of the column.
 
         A magnitude of 10.2 stored in single precision then opens the bin at 10.2, as it does in double precision.
         """
@@ -110,6 +122,21 @@ class Counter:
         m_mag = stored.astype(np.float64)
         m_mag[np.isinf(m_mag)] = np.nan
         return m_mag, np.asarray(edges_mag).astype(precision).astype(np.float64)
+
+    @staticmethod
+    def colours(columns: Sequence[pa.Array], edges_mag: np.ndarray | None) -> tuple[np.ndarray, np.ndarray]:
+        """Return colours, NaN where there is none, and edges; from one column, two, or (empty both) none."""
+        if not columns:
+            return np.zeros(0), np.zeros(0)
+        if len(columns) == 1:
+            return Counter.magnitudes(columns[0], edges_mag)
+        stored = [numbers(column) for column in columns]
+        coarse = any(values.dtype.kind == "f" and values.dtype.itemsize < 8 for values in stored)
+        blue, red = (values.astype(np.float64) for values in stored)
+        with np.errstate(invalid="ignore"):
+            c_mag = blue - red
+        c_mag[np.isinf(c_mag)] = np.nan
+        return c_mag, edges_mag - DIFFERENCE_MAG["f4" if coarse else "f8"]
 
 
 def refuse_beyond(path: str, position: Position, angles_rad: tuple[np.ndarray, np.ndarray], first_row: int) -> None:
@@ -178,9 +205,11 @@ def added_up(tallies: list[Tally], groups: Sequence, cuts: Sequence[Cut], first:
     reached = sum(tally.reached for tally in tallies)
     if excluded.sum() == 0:
         raise InputError(f"{first[0].path}: holds no rows; expected at least one star")
-    reasons = [NO_POSITION, *(reason for cut in cuts for reason in cut.reasons), NO_MAGNITUDE, *OUTSIDE]
+    coloured = any(group.colour is not None for group in groups)
+    stages = [(r, n) for r, n in zip(STAGES, reached.tolist(), strict=False) if coloured or r not in OF_COLOUR]
+    reasons = [NO_POSITION, *(reason for cut in cuts for reason in cut.reasons)]
     dropped: dict[str, int] = {}
-    for reason, n in zip(reasons, [*excluded[1:].tolist(), *reached[: kernels.COUNTED].tolist()], strict=True):
+    for reason, n in [*zip(reasons, excluded[1:].tolist(), strict=True), *stages]:
         dropped[reason] = dropped.get(reason, 0) + n  # a cut given twice has its reasons once
     counts = {group.name: sum(tally.counts[g] for tally in tallies) for g, group in enumerate(groups)}
     return Counted(counts, int(excluded.sum()), int(reached[kernels.COUNTED]), dropped, first[1].found)

@@ -10,7 +10,7 @@ import math
 import numba
 import numpy as np
 
-OUTSIDE_BINS, OUTSIDE_FIELDS, COUNTED = 1, 2, 3
+OUTSIDE_BINS, NO_COLOUR, OUTSIDE_COLOURS, OUTSIDE_FIELDS, COUNTED = 1, 2, 3, 4, 5
 """How far a star came; 0 is a star without magnitude."""
 
 
@@ -128,6 +128,41 @@ def bin_of(m, edges):
     return j
 
 
+@numba.njit(cache=True, nogil=True)
+def colour_bin_of(c, edges):
+    """Return the same for edges that may begin with -inf and end with inf."""
+    first, last = 0, edges.size - 1
+    if edges[0] == -np.inf:
+        if c < edges[1]:
+            return 0
+        first = 1
+    if edges[last] == np.inf:
+        if c >= edges[last - 1]:
+            return last - 1
+        last -= 1
+    j = bin_of(c, edges[first : last + 1])
+    return j + first if j >= 0 else -1
+
+
+@numba.njit(cache=True, nogil=True)
+def find_bins(m_mag, c_mag, use, edges, colour_edges, stage, place):
+    """Fill stage (star,), how far each star comes by its magnitude and colour, and place, its bin or -1.
+
+    Bins are numbered magnitude before colour; without a colour c_mag and colour_edges are empty.
+    """
+    for i in range(m_mag.size):
+        seen = use[i] and not math.isnan(m_mag[i])
+        place[i] = bin_of(m_mag[i], edges) if seen else -1
+        stage[i] = (OUTSIDE_FIELDS if place[i] >= 0 else OUTSIDE_BINS) if seen else 0
+    if colour_edges.size == 0:
+        return
+    for i in range(c_mag.size):
+        if place[i] >= 0:
+            k = -1 if math.isnan(c_mag[i]) else colour_bin_of(c_mag[i], colour_edges)
+            place[i] = place[i] * (colour_edges.size - 1) + k if k >= 0 else -1
+            stage[i] = OUTSIDE_FIELDS if k >= 0 else (NO_COLOUR if math.isnan(c_mag[i]) else OUTSIDE_COLOURS)
+
+
 @numba.njit(cache=True, nogil=True, error_model="numpy")
 def rotate(n_star, rotation, place):
     """Turn the first stars of place (5, star) into another frame."""
@@ -157,29 +192,26 @@ def locate(lon_rad, lat_rad, rotation, turn, order, place, index):
 
 @numba.njit(cache=True, nogil=True, error_model="numpy")
 def count(
-    lon_rad, lat_rad, m_mag, use, edges, rotation, turn, orders, first, candidate, shift, pixel, centre, cos_radius,
-    counts, reached,
+    lon_rad, lat_rad, m_mag, c_mag, use, edges, colour_edges, rotation, turn, orders, first, candidate, shift, pixel,
+    centre, cos_radius, counts, reached,
 ):  # fmt: skip
     """Add stars to counts (field, bin) and raise reached (star,) to how far each of them came.
 
-    use (star,) bool: the others are passed over. rotation (3, 3), applied where ``turn``: from the stars' frame to the
-    table's. orders: (coarse, fine) HEALPix orders of the table; candidate[first[p]:first[p + 1]] are the fields that
-    may hold stars of coarse pixel p. A field is a pixel (pixel >= 0: equal to the fine index >> shift) or a circle
-    (unit vector centre (field, 3), cos_radius).
+    use (star,) bool: the others are passed over. Without a colour c_mag and colour_edges are empty. rotation (3, 3),
+    applied where ``turn``: from the stars' frame to the table's. orders: (coarse, fine) HEALPix orders of the table;
+    candidate[first[p]:first[p + 1]] are the fields that may hold stars of coarse pixel p. A field is a pixel (pixel >=
+    0: equal to the fine index >> shift) or a circle (unit vector centre (field, 3), cos_radius).
     """
     coarse, fine = orders
     place, index = np.empty((5, BLOCK)), np.empty(BLOCK, np.int64)
+    bins, stages = np.empty(BLOCK, np.int64), np.empty(BLOCK, np.uint8)
     for start in range(0, lon_rad.size, BLOCK):
         stop = min(start + BLOCK, lon_rad.size)
+        find_bins(m_mag[start:stop], c_mag[start:stop], use[start:stop], edges, colour_edges, stages, bins)
         locate(lon_rad[start:stop], lat_rad[start:stop], rotation, turn, fine, place, index)
-        for i in range(start, stop):
-            if not use[i] or math.isnan(m_mag[i]):
-                continue
-            stage = OUTSIDE_BINS
-            j = bin_of(m_mag[i], edges)
+        for o in range(stop - start):
+            stage, j = stages[o], bins[o]
             if j >= 0:
-                stage = OUTSIDE_FIELDS
-                o = i - start
                 coarse_index = index[o] >> (2 * (fine - coarse))
                 for k in range(first[coarse_index], first[coarse_index + 1]):
                     f = candidate[k]
@@ -190,5 +222,5 @@ def count(
                         inside = cosine >= cos_radius[f]
                     if inside:
                         counts[f, j] += 1
-                        stage = COUNTED
-            reached[i] = max(reached[i], np.uint8(stage))
+                        stage = np.uint8(COUNTED)
+            reached[start + o] = max(reached[start + o], stage)

@@ -22,6 +22,7 @@ COMMANDS = {
     "predict": "Predict how many stars of which component each field and bin holds.",
     "fit": "Fit the Galaxy's structure to the counts of a survey.",
     "report": "Draw the figures of a run and the page that puts them together.",
+    "population": "Show a population: luminosity function, colours, classes, sources.",
     "laws": "List the density laws, their parameters, and the published Galaxies.",
     "demo": "Fit and report an invented survey: truth against recovery.",
 }

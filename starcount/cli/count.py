@@ -15,8 +15,8 @@ from starcount.cli import screen
     "columns",
     multiple=True,
     metavar="KEY=COLUMN",
-    help="Which column is l and b, or ra and dec, and mag, e.g. ra=RAJ2000; unit=rad where angles are not in degrees "
-    "and the file does not say so. "
+    help="Which column is l and b, or ra and dec, and mag, and colour or else blue and red, e.g. ra=RAJ2000; unit=rad "
+    "where angles are not in degrees and the file does not say so. "
     "Without it columns are found by name and unit.",
 )
 @click.option("--cut", "cuts", multiple=True, metavar="COMPARISON", help='Keep rows where it holds, e.g. "ruwe < 1.4".')

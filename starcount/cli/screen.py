@@ -122,7 +122,8 @@ def _plain(clock: Callable[[], float]) -> Progress:
 def run_lines(record: dict) -> list[str]:
     """What a run found, in lines: counts by group, parameters of a fit, the bins that fit worst, where things are."""
     result = record["result"]
-    lines = [*_group_lines(result["groups"])]
+    lines = [*_group_lines(result["groups"]), *(f"caution: {caution}" for caution in result["cautions"])]
+    lines += _class_lines(result["groups"])
     if "verdict" in result:
         lines += ["", *_parameter_lines(result["parameters"]), "", result["verdict"]]
         lines += [f"caution: {warning}" for warning in result["warnings"]]
@@ -141,6 +142,18 @@ def _group_lines(groups: dict) -> list[str]:
     return columns(rows)
 
 
+def _class_lines(groups: dict) -> list[str]:
+    """Stars by component and class, where they were asked for."""
+    lines = []
+    for name, group in groups.items():
+        if group["classes"]:
+            kinds = list(next(iter(group["classes"].values())))
+            rows = [[f"expected of {name}", *kinds]]
+            rows += [[part, *(f"{stars[kind]:.1f}" for kind in kinds)] for part, stars in group["classes"].items()]
+            lines += ["", *columns(rows)]
+    return lines
+
+
 def _parameter_lines(parameters: list[dict]) -> list[str]:
     rows = [["parameter", "median", "68 % interval (equal-tailed)", "unit", "r-hat", "ESS bulk", "prior width left"]]
     for p in parameters:
@@ -152,8 +165,16 @@ def _parameter_lines(parameters: list[dict]) -> list[str]:
 
 
 def _bin_lines(bins: list[dict]) -> list[str]:
-    rows = [["group", "field", "from", "to [mag]", "counted", "expected", "pull", "probability"]]
+    coloured = "colour" in bins[0]
+    head = ["group", "field", "from", "to [mag]", *(["colour"] if coloured else []), "counted"]
+    rows = [[*head, "expected", "pull", "probability"]]
     for b in bins:
-        numbers = [f"{b['expected']:.1f}", f"{b['pull']:+.1f}", f"{b['tail']:.2g}"]
-        rows.append([b["group"], b["field"], f"{b['m_lo']:g}", f"{b['m_hi']:g}", str(b["n"]), *numbers])
+        place = [b["group"], b["field"], f"{b['m_lo']:g}", f"{b['m_hi']:g}", *([_colour(b)] if coloured else [])]
+        rows.append([*place, str(b["n"]), f"{b['expected']:.1f}", f"{b['pull']:+.1f}", f"{b['tail']:.2g}"])
     return columns(rows)
+
+
+def _colour(b: dict) -> str:
+    """Such as ``BP-RP 0.4 to 0.8``, open bins without the limit they have not; a dash without a colour."""
+    ends = [word + f"{b[limit]:g}" for word, limit in (("from ", "c_lo"), ("to ", "c_hi")) if b[limit] is not None]
+    return " ".join([b["colour"] or "-", *ends])

@@ -10,7 +10,7 @@ from collections.abc import Mapping
 import numpy as np
 
 from starcount.dust.anchored import Anchored
-from starcount.dust.bands import band_coefficient
+from starcount.dust.bands import TEMPERATURES_K, band_coefficients, extinction_temperatures
 from starcount.dust.constant import Constant
 from starcount.dust.d0 import D0, DustDisc
 from starcount.dust.entries import Entries, entries
@@ -40,4 +40,13 @@ def A_V_mag(fields, lines, d_kpc: np.ndarray, profiles: Mapping | None = None) -
     return A_V
 
 
-__all__ = ["D0", "DUST", "A_V_mag", "DustDisc", "Entries", "band_coefficient"]
+__all__ = [
+    "D0",
+    "DUST",
+    "TEMPERATURES_K",
+    "A_V_mag",
+    "DustDisc",
+    "Entries",
+    "band_coefficients",
+    "extinction_temperatures",
+]

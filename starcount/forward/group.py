@@ -1,21 +1,23 @@
-"""One group of fields made ready to be predicted: its projection, luminosity functions and extra rows."""
+"""One group of fields made ready to be predicted: its projection, luminosity matrix and extra rows."""
 
 from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
 
-from starcount import stars
-from starcount.forward import kernels
+from starcount import dust, stars
+from starcount.errors import InputError
 from starcount.forward.extra import extra_rows
-from starcount.forward.lines import MOST_DUST, group_lines
-from starcount.forward.luminosity import layer_functions, sphere_points
+from starcount.forward.lines import Coefficients, coefficients, group_lines
+from starcount.forward.matrix import LuminosityMatrix, Rows, occupied_rows
 from starcount.forward.nodes import MU_FIRST_MAG
-from starcount.forward.projection import Y_STEP_MAG, Lines, Projection, make_projection, y_grid
+from starcount.forward.projection import Grid, Lines, Projection, make_projection, y_grid
+from starcount.forward.response import Y_STEP_MAG, Response, excess_grid, make_response
+from starcount.forward.ribbon import shift_ranges
+from starcount.forward.tables import StarTables
 from starcount.galaxy import Galaxy
 from starcount.survey import Group
 
-_CELLS = np.array([stars.M_EDGES_MAG[0], 1.0 / (stars.M_EDGES_MAG[1] - stars.M_EDGES_MAG[0])])
 ACCURACY = 5e-5
 """Part of a bin by which one more halving of a line's panels may change it."""
 
@@ -26,9 +28,9 @@ _LAST_Y_MAG = 60.0  # beyond any magnitude, however much dust
 class GroupModel:
     """A group of fields, or the census, with all that is fixed while a Galaxy's numbers change.
 
-    ``counts`` and ``used`` (field, bin) are the data (counts None where there are none); ``lf`` (layer, class, cell)
-    the luminosity functions; ``lf_arrays`` what ``kernels.luminosity`` takes after them; ``extra`` (extra, field, bin)
-    expected counts of sources that are not stars of the Galaxy, at amplitude 1.
+    ``counts`` and ``used`` (field, bin) are the data (counts None where there are none); ``matrix`` the luminosity
+    matrix, ``rows`` its rows at one shift, ``tables`` the stars it is made of (None for the census); ``extra`` (extra,
+    field, bin) expected counts of sources that are not stars of the Galaxy, at amplitude 1.
     """
 
     name: str
@@ -37,132 +39,165 @@ class GroupModel:
     counts: np.ndarray | None
     used: np.ndarray
     projection: Projection
-    lf: np.ndarray
-    lf_arrays: tuple[np.ndarray, ...]
+    matrix: LuminosityMatrix
+    tables: StarTables | None
+    rows: Rows
     extra_names: tuple[str, ...]
     extra: np.ndarray
 
-    def luminosity_matrix(self, lf: np.ndarray | None = None) -> np.ndarray:
-        """Return W (y x layer, bin) for luminosity functions ``lf`` (by default the group's own)."""
-        return kernels.luminosity(self.lf if lf is None else lf, *self.lf_arrays)
+    def luminosity_matrix(self, factors: np.ndarray | None = None) -> np.ndarray:
+        """Return W (row, bin), with ``factors`` (layer, knot) on the luminosity functions at ``knots.KNOTS_MAG``."""
+        if factors is None:
+            return self.matrix.whole
+        return self.matrix.with_factors(factors, np.arange(len(self.galaxy.layers)))
 
-    def expected(self, values: Mapping[str, float] | None = None, parts: bool = False):
+    def expected(
+        self, values: Mapping[str, float] | None = None, *, factors: np.ndarray | None = None, parts: bool | str = False
+    ):
         """Return expected counts (field, bin), or with ``parts`` a dict of them by component and extra row.
 
-        ``values`` are numbers by parameter name; those left out have the Galaxy's own. The luminosity functions stay
-        as the census gave them at the Galaxy's own heights: bins of a thin disc whose height is changed from 0.30 to
-        0.22 kpc are up to 3 % off what a Galaxy read with that height predicts. A fit mends this by its curves and by
-        the census as data; to predict without, edit the Galaxy.
+        ``values`` are numbers by parameter name; those left out have the Galaxy's own. ``parts="class"`` splits the
+        components by class of stars: its keys are (component, class), and (name, "") of extra rows.
+
+        The luminosity functions stay as the census gave them at the Galaxy's own heights: bins of a thin disc whose
+        height is changed from 0.30 to 0.22 kpc are up to 3 % off what a Galaxy read with that height predicts. A fit
+        mends this by its curves and by the census as data; to predict without, edit the Galaxy.
         """
-        v = self.galaxy.vector(values)
+        v, W = self.galaxy.vector(values), self.luminosity_matrix(factors)
         if not parts:
-            return self.projection.counts(v, self.luminosity_matrix()) + self.extra.sum(axis=0)
+            return self.projection.counts(v, W) + self.extra.sum(axis=0)
+        if parts != "class":
+            return {**self._by_component(v, W), **dict(zip(self.extra_names, self.extra, strict=True))}
+        found = {}
+        for c, name in enumerate(stars.CLASSES):
+            mine = self._by_component(v, self._of(self.tables.of_class(c, factors)))
+            found |= {(component, name): counts for component, counts in mine.items()}
+        return {**found, **{(name, ""): counts for name, counts in zip(self.extra_names, self.extra, strict=True)}}
+
+    @property
+    def outside(self) -> float:
+        """The share of the expected stars whose magnitudes rest on relations outside their verified range."""
+        v = self.galaxy.vector()
+        counted = self.projection.counts(v, self.matrix.whole).sum()
+        return float(self.projection.counts(v, self._of(self.tables.outside())).sum() / counted) if counted else 0.0
+
+    def _of(self, table: np.ndarray) -> np.ndarray:
+        return self.matrix.of(self.rows.take(table))
+
+    def _by_component(self, v: np.ndarray, W: np.ndarray) -> dict[str, np.ndarray]:
         found = {}
         for component in self.galaxy.components:
-            mine = np.array([c is component for c, _ in self.galaxy.layers])
-            found[component.name] = self.projection.counts(v, self.luminosity_matrix(self.lf * mine[:, None, None]))
-        return {**found, **dict(zip(self.extra_names, self.extra, strict=True))}
+            mine = np.array([c is component for c, _ in self.galaxy.layers])[self.matrix.layer]
+            found[component.name] = self.projection.counts(v, W * mine[:, None])
+        return found
 
 
-def make_group_model(group: Group, galaxy: Galaxy, accuracy: float = ACCURACY) -> GroupModel:
-    """Return a group of fields made ready for a Galaxy. Raises ``UnknownName`` for its band, dust or extra rows."""
-    lf = layer_functions(galaxy, group.band)
-    edges, response = group.observation.matrix(group.edges_mag)
-    reach, M_range = layer_reach(lf, edges[0], edges[-1]), _occupied(lf)
-    v, table = galaxy.vector(), galaxy.layer_table()
+def make_group_model(group: Group, galaxy: Galaxy, accuracy: float = ACCURACY, dust_range: float = 1.0) -> GroupModel:
+    """Return a group of fields made ready for a Galaxy; see ``ForwardModel`` for the rest.
 
-    def ready(y_range) -> tuple[np.ndarray, tuple[np.ndarray, ...]]:
-        y = y_grid(edges, M_range, y_range)
-        return y, _lf_arrays(y, edges[:-1], edges[1:], np.full(edges.size - 1, -1), response)
-
-    y, lf_arrays = ready((MU_FIRST_MAG, _LAST_Y_MAG))
-    W = kernels.luminosity(lf, *lf_arrays)
-
-    def count(lines: Lines) -> np.ndarray:
-        return make_projection(table, galaxy.R0_kpc, lines, y, reach).counts(v, W)
-
-    lines = group_lines(group, galaxy, count, (reach[:, 0].min(), reach[:, 1].max()), accuracy)
-    y_needed, lf_arrays = ready((lines.mu_mag.min(), (lines.mu_mag + MOST_DUST * lines.A_mag).max()))
-    names = tuple(group.extra)
-    rows = extra_rows(names, group.band, group.edges_mag)
+    Raises ``UnknownName`` for its bands, dust or extra rows, ``InputError`` for a colour that cannot be predicted.
+    """
+    temperatures = dust.extinction_temperatures((group.band, *(group.colour or ())))
+    tables = StarTables(galaxy, group.band, group.colour, temperatures)
+    reddening = coefficients(group.band, group.colour, temperatures)
+    rows = occupied_rows(tables.whole)
+    reach = _layer_reach(group, tables)
+    lines = _settled_lines(group, galaxy, tables, reddening, rows, reach, accuracy, dust_range)
+    y = _y_grid(group, tables, (lines.mu_mag.min(), (lines.mu_mag + dust_range * lines.A_mag).max()))
+    response = make_response(group, y, _excess_grid(group, tables, lines, dust_range), _gain(group, tables, y))
+    grid, names = Grid(y, response.excess_mag), tuple(group.extra)
+    ranges = None if group.colour is None else shift_ranges(lines, grid, dust_range)
+    if names and group.colour is not None:
+        raise InputError(f"group {group.name!r}: extra rows have no colours; expected none in a group with a colour")
+    extra = extra_rows(names, group.band, group.edges_mag)[:, None, :] * group.fields.area_deg2[None, :, None]
     return GroupModel(
         name=group.name,
         group=group,
         galaxy=galaxy,
         counts=group.counts,
         used=group.used,
-        projection=make_projection(table, galaxy.R0_kpc, lines, y_needed, reach),
-        lf=lf,
-        lf_arrays=lf_arrays,
+        projection=make_projection(galaxy.layer_table(), galaxy.R0_kpc, lines, grid, rows, reach, ranges, dust_range),
+        matrix=_matrix(tables, rows, response, ranges),
+        tables=tables,
+        rows=rows,
         extra_names=names,
-        extra=rows[:, None, :] * group.fields.area_deg2[None, :, None],
+        extra=extra if names else np.zeros((0, len(group.fields.name), group.n_bin)),
     )
 
 
-def layer_reach(lf: np.ndarray, m_first: float, m_last: float) -> np.ndarray:
-    """Return the shifts y (layer, 2) between which each layer's stars can fall between two magnitudes.
+def _matrix(tables: StarTables, rows: Rows, response: Response, ranges: np.ndarray | None) -> LuminosityMatrix:
+    n_y, n_slab = response.y_mag.size, response.excess_mag.size
+
+    def kept(slab: int) -> np.ndarray | None:
+        return None if ranges is None else ranges[slab]
+
+    def matrix_of(table: np.ndarray, slab: int) -> np.ndarray:
+        needed = (0, n_y) if ranges is None else (kept(slab)[:, 0].min(), kept(slab)[:, 1].max())
+        return rows.flat(response.slab(table, slab, needed), kept(slab))
+
+    layer = np.broadcast_to(rows.layer, (n_y, rows.layer.size))
+    return LuminosityMatrix(
+        n_slab=n_slab,
+        layer=np.concatenate([rows.flat(layer, kept(slab)) for slab in range(n_slab)]),
+        table_of=lambda knot: rows.take(tables.at_knot(knot)),
+        matrix_of=matrix_of,
+    )
+
+
+def _settled_lines(
+    group: Group, galaxy: Galaxy, tables: StarTables, reddening: Coefficients, rows: Rows, reach, accuracy, dust_range
+) -> Lines:
+    """The sight lines, settled for counts in magnitude only: colours follow from the same nodes."""
+    y = _y_grid(group, tables, (MU_FIRST_MAG, _LAST_Y_MAG))
+    response = make_response(group, y, None)
+    table = rows.take(tables.whole.sum(axis=3, keepdims=True))
+    W = rows.flat(response.slab(table, 0))
+    v, layers, grid = galaxy.vector(), galaxy.layer_table(), Grid(y, np.zeros(1))
+
+    def count(lines: Lines) -> np.ndarray:
+        return make_projection(layers, galaxy.R0_kpc, lines, grid, rows, reach).counts(v, W)
+
+    y_range = reach[:, 0].min(), reach[:, 1].max()
+    return group_lines(group, galaxy, reddening, count, y_range, accuracy, dust_range)
+
+
+def _y_grid(group: Group, tables: StarTables, y_range) -> np.ndarray:
+    cells = np.flatnonzero(tables.whole.any(axis=(0, 1, 3)))
+    M_range = stars.M_EDGES_MAG[cells[0]], stars.M_EDGES_MAG[cells[-1] + 1]
+    bright, faint = group.observation.reach(group.edges_mag)
+    return y_grid(group.edges_mag[0], (bright, faint), M_range, y_range)
+
+
+def _excess_grid(group: Group, tables: StarTables, lines: Lines, dust_range: float) -> np.ndarray | None:
+    if group.colour is None:
+        return None
+    bluest = stars.C_EDGES_MAG[np.flatnonzero(tables.whole.any(axis=(0, 1, 2)))[0]]
+    return excess_grid(dust_range * lines.E_mag.max(), group.edges_colour_mag, bluest)
+
+
+def _gain(group: Group, tables: StarTables, y_mag: np.ndarray) -> np.ndarray | None:
+    """How many objects a system of each cell counts as (y, cell), where the survey resolves the wider ones.
+
+    The distance is that of a star without extinction, so that it is a function of the shift: behind A = 1 mag it is
+    1.6 times too large, which changes the share of resolved pairs by a few per cent.
+    """
+    if group.resolution_arcsec is None:
+        return None
+    M_V = tables.dwarfs_M_V()
+    return np.array([stars.resolved_gain(M_V, 10 ** (y / 5 + 1), group.resolution_arcsec) for y in y_mag])
+
+
+def _layer_reach(group: Group, tables: StarTables) -> np.ndarray:
+    """The shifts y (layer, 2) between which each layer's stars can fall into the bins, errors included.
 
     Two steps of the grid to spare, which the spline reaches over. A layer without stars reaches nothing.
     """
-    reach = np.zeros((len(lf), 2))
-    for k, layer in enumerate(lf.sum(axis=1)):
-        cells = np.flatnonzero(layer)
-        if cells.size:
-            brightest, faintest = stars.M_EDGES_MAG[cells[0]], stars.M_EDGES_MAG[cells[-1] + 1]
-            reach[k] = m_first - faintest - 2.0 * Y_STEP_MAG, m_last - brightest + 2.0 * Y_STEP_MAG
+    bright, faint = group.observation.reach(group.edges_mag)
+    occupied = tables.whole.any(axis=(1, 3))
+    reach = np.zeros((len(occupied), 2))
+    for k, cells in enumerate(occupied):
+        at = np.flatnonzero(cells)
+        if at.size:
+            brightest, faintest = stars.M_EDGES_MAG[at[0]], stars.M_EDGES_MAG[at[-1] + 1]
+            reach[k] = bright - faintest - 2.0 * Y_STEP_MAG, faint - brightest + 2.0 * Y_STEP_MAG
     return reach
-
-
-def _occupied(lf: np.ndarray) -> tuple[float, float]:
-    """The absolute magnitudes between which there are stars."""
-    cells = np.flatnonzero(lf.sum(axis=(0, 1)))
-    return stars.M_EDGES_MAG[cells[0]], stars.M_EDGES_MAG[cells[-1] + 1]
-
-
-def _lf_arrays(y, m_low, m_high, bin_class, response) -> tuple[np.ndarray, ...]:
-    arrays = (y, _CELLS, m_low, m_high, bin_class, np.asarray(response, float))
-    return tuple(np.ascontiguousarray(array) for array in arrays)
-
-
-def make_census_model(galaxy: Galaxy, band: str) -> GroupModel:
-    """Return the local census as one more group: its fields are spheres around the Sun, its bins the census rows.
-
-    A sphere is a set of short sight lines of one node each, whose volumes sum to 1 and whose shift y is zero: the same
-    projection that predicts the sky then predicts the mean number density in the sphere, by absolute magnitude.
-    """
-    census = stars.census(band)
-    radii, field = np.unique(census.radius_pc, return_inverse=True)
-    points = [sphere_points(r, galaxy.values["sun.z0_kpc"]) for r in radii]
-    X, Z, weight = (
-        np.concatenate(column) for column in zip(*((p.X_kpc, p.Z_kpc, p.weight) for p in points), strict=True)
-    )
-    d = np.hypot(X, Z)
-    first = np.concatenate([[0], np.cumsum([p.weight.size for p in points])])
-    lines = Lines(
-        direction=np.stack([X / d, np.zeros_like(X), Z / d], axis=-1),
-        first_line=first,
-        first_node=np.arange(d.size + 1),
-        d_kpc=d,
-        volume_pc3=weight,
-        mu_mag=np.zeros_like(d),
-        A_mag=np.zeros((1, 1, d.size)),
-        node_weight=np.ones(1),
-    )
-    y = Y_STEP_MAG * np.arange(-2, 3)
-    used = np.zeros((radii.size, census.n.size), bool)
-    used[field, np.arange(census.n.size)] = True
-    response = np.diag(census.volume_pc3 / census.systems)
-    return GroupModel(
-        name="census",
-        group=None,
-        galaxy=galaxy,
-        counts=np.where(used, census.n, 0),
-        used=used,
-        projection=make_projection(
-            galaxy.layer_table(), galaxy.R0_kpc, lines, y, np.tile([-1.0, 1.0], (len(galaxy.layers), 1))
-        ),
-        lf=layer_functions(galaxy, band),
-        lf_arrays=_lf_arrays(y, census.M_lo, census.M_hi, census.class_index.astype(np.int64), response),
-        extra_names=(),
-        extra=np.zeros((0, radii.size, census.n.size)),
-    )

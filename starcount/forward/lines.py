@@ -2,10 +2,12 @@
 
 import logging
 from collections.abc import Callable
+from dataclasses import dataclass
 
 import numpy as np
 
 from starcount import dust
+from starcount.errors import InputError
 from starcount.forward.nodes import Nodes, place_nodes
 from starcount.forward.projection import Lines
 from starcount.galaxy import Galaxy
@@ -15,14 +17,48 @@ from starcount.survey import Group
 log = logging.getLogger(__name__)
 
 _MOST_HALVINGS = 7
-MOST_DUST = 4.0
-"""A fit may raise or lower a field's extinction by this factor before stars are missed."""
-
 _NEGLIGIBLE = 1e-6  # part of a bin that the nearest nodes may hold and still be left out
 
 
+@dataclass(frozen=True, eq=False)
+class Coefficients:
+    """Extinction in the band of the counts, and colour excess (None without colour), per A_V: (temperature,)."""
+
+    band: np.ndarray
+    excess: np.ndarray | None
+
+    def A_mag(self, A_V_mag: np.ndarray) -> np.ndarray:
+        """Return the extinction (temperature, extinction node, node) of visual extinctions (node,)."""
+        return self.band[:, None, None] * A_V_mag
+
+    def E_mag(self, A_V_mag: np.ndarray) -> np.ndarray | None:
+        """Return the colour excess likewise."""
+        return None if self.excess is None else self.excess[:, None, None] * A_V_mag
+
+
+def coefficients(band: str, colour: tuple[str, str] | None, temperatures_K: np.ndarray) -> Coefficients:
+    """Return the coefficients of a band and colour at some of ``dust.TEMPERATURES_K``.
+
+    Raises ``InputError`` for a colour that dust does not redden.
+    """
+    chosen = np.isin(dust.TEMPERATURES_K, temperatures_K)
+    in_band = dust.band_coefficients(band)[chosen]
+    if colour is None:
+        return Coefficients(in_band, None)
+    blue, red = (dust.band_coefficients(name)[chosen] for name in colour)
+    if (blue <= red).any():
+        raise InputError(f"colour {colour[0]} - {colour[1]}: dust makes it bluer; expected the bluer band first")
+    return Coefficients(in_band, blue - red)
+
+
 def group_lines(
-    group: Group, galaxy: Galaxy, count: Callable[[Lines], np.ndarray], y_range_mag, accuracy: float
+    group: Group,
+    galaxy: Galaxy,
+    coefficients: Coefficients,
+    count: Callable[[Lines], np.ndarray],
+    y_range_mag,
+    accuracy: float,
+    dust_range: float,
 ) -> Lines:
     """Return a group's sight lines with their nodes, extinction included.
 
@@ -30,7 +66,7 @@ def group_lines(
     halved until that changes no bin by more than the part ``accuracy``. Nodes that reach no bin are left out: those
     with y outside ``y_range_mag``, and the nearest ones, which hold less than 1e-6 of any bin.
     """
-    extinction = _Extinction(group, dust.band_coefficient(group.band))
+    extinction = _Extinction(group, coefficients)
     n_line = group.sight_lines.l_deg.size
     settled: list[tuple[Nodes, np.ndarray] | None] = [None] * n_line
     pending = np.arange(n_line)
@@ -53,18 +89,18 @@ def group_lines(
         if not pending.size:
             break
         coarse, coarse_counts = fine.take(open_rows), fine_counts[open_rows]
-    return _join(group, settled, y_range_mag, first_mu)
+    return _join(group, coefficients, settled, y_range_mag, first_mu, dust_range)
 
 
 class _Extinction:
-    """The extinction of chosen sight lines of a group, in its band."""
+    """The visual extinction of chosen sight lines of a group."""
 
-    def __init__(self, group: Group, coefficient: float):
-        self.group, self.coefficient = group, coefficient
+    def __init__(self, group: Group, coefficients: Coefficients):
+        self.group, self.coefficients = group, coefficients
         self.field = np.repeat(np.arange(group.fields.name.size), np.diff(group.sight_lines.first))
 
     def __call__(self, chosen: np.ndarray, d_kpc: np.ndarray) -> np.ndarray:
-        """Return A (line, node) in mag."""
+        """Return A_V (line, node) in mag."""
         group = self.group
         field = self.field[chosen]
         lines = _Chosen(
@@ -72,7 +108,7 @@ class _Extinction:
             group.sight_lines.b_deg[chosen],
             np.searchsorted(field, np.arange(group.fields.name.size + 1)),
         )
-        return self.coefficient * dust.A_V_mag(group.fields, lines, d_kpc, group.profiles)
+        return dust.A_V_mag(group.fields, lines, d_kpc, group.profiles)
 
 
 class _Chosen:
@@ -89,7 +125,7 @@ class _Trial:
         sight = group.sight_lines
         l_deg, b_deg = sight.l_deg[chosen], sight.b_deg[chosen]
         self.nodes = place_nodes(l_deg, b_deg, galaxy.R0_kpc, galaxy.values["sun.z0_kpc"], halvings)
-        self.A_mag = extinction(chosen, self.nodes.d_kpc)
+        self.A_V_mag = extinction(chosen, self.nodes.d_kpc)
         n_line, n_node = self.nodes.d_kpc.shape
         self.lines = Lines(
             direction=unit_vectors(l_deg, b_deg),
@@ -98,7 +134,7 @@ class _Trial:
             d_kpc=self.nodes.d_kpc.ravel(),
             volume_pc3=(self.nodes.volume_pc3 * sight.omega_sr[chosen, None]).ravel(),
             mu_mag=self.nodes.mu_mag.ravel(),
-            A_mag=self.A_mag.reshape(1, 1, -1),
+            A_mag=extinction.coefficients.A_mag(self.A_V_mag.ravel()),
             node_weight=np.ones(1),
         )
 
@@ -106,13 +142,13 @@ class _Trial:
         """Return the trial of some of its lines (their nodes only)."""
         trial = object.__new__(_Trial)
         trial.nodes = Nodes(*(x[rows] for x in (self.nodes.d_kpc, self.nodes.mu_mag, self.nodes.volume_pc3)))
-        trial.A_mag = self.A_mag[rows]
+        trial.A_V_mag = self.A_V_mag[rows]
         return trial
 
     def row(self, row: int) -> tuple[np.ndarray, ...]:
-        """Distance, volume per steradian, modulus and extinction of one line's nodes."""
+        """Distance, volume per steradian, modulus and visual extinction of one line's nodes."""
         nodes = self.nodes
-        return nodes.d_kpc[row], nodes.volume_pc3[row], nodes.mu_mag[row], self.A_mag[row]
+        return nodes.d_kpc[row], nodes.volume_pc3[row], nodes.mu_mag[row], self.A_V_mag[row]
 
 
 def _first_modulus(trial: _Trial, count: Callable[[Lines], np.ndarray]) -> float:
@@ -140,16 +176,17 @@ def _first_modulus(trial: _Trial, count: Callable[[Lines], np.ndarray]) -> float
     return float(trial.nodes.mu_mag[chosen, matters.argmax(axis=1)].min())
 
 
-def _join(group: Group, settled: list, y_range_mag, first_mu: float) -> Lines:
+def _join(group: Group, coefficients: Coefficients, settled: list, y_range_mag, first_mu, dust_range) -> Lines:
     """One line after the other, without the nodes that cannot reach a bin."""
     kept, sizes = [], []
-    for (d, volume, mu, A), omega in zip(settled, group.sight_lines.omega_sr, strict=True):
+    least, most = coefficients.band[0] / dust_range, coefficients.band[-1] * dust_range
+    for (d, volume, mu, A_V), omega in zip(settled, group.sight_lines.omega_sr, strict=True):
         # Room for a fit to change a field's extinction: the nodes that could then reach a bin stay.
-        reach = (mu + MOST_DUST * A > y_range_mag[0]) & (mu + A / MOST_DUST < y_range_mag[1]) & (mu >= first_mu)
-        reach[np.argmin(np.abs(mu + A - np.mean(y_range_mag)))] = True  # a line keeps at least one node
-        kept.append((d[reach], volume[reach] * omega, mu[reach], A[reach]))
+        reach = (mu + most * A_V > y_range_mag[0]) & (mu + least * A_V < y_range_mag[1]) & (mu >= first_mu)
+        reach[np.argmin(np.abs(mu + A_V - np.mean(y_range_mag)))] = True  # a line keeps at least one node
+        kept.append((d[reach], volume[reach] * omega, mu[reach], A_V[reach]))
         sizes.append(int(reach.sum()))
-    d, volume, mu, A = (np.concatenate(column) for column in zip(*kept, strict=True))
+    d, volume, mu, A_V = (np.concatenate(column) for column in zip(*kept, strict=True))
     return Lines(
         direction=unit_vectors(group.sight_lines.l_deg, group.sight_lines.b_deg),
         first_line=group.sight_lines.first,
@@ -157,6 +194,7 @@ def _join(group: Group, settled: list, y_range_mag, first_mu: float) -> Lines:
         d_kpc=d,
         volume_pc3=volume,
         mu_mag=mu,
-        A_mag=A.reshape(1, 1, -1),
+        A_mag=coefficients.A_mag(A_V),
         node_weight=np.ones(1),
+        E_mag=coefficients.E_mag(A_V),
     )

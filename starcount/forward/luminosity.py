@@ -106,9 +106,14 @@ def census_density_pc3(galaxy: Galaxy) -> float:
     return found
 
 
-def _population(component: Component, band: str) -> np.ndarray:
+def population_name(component: Component) -> str | Path:
+    """Return a component's population: one of our names, or the path of a user's table."""
     name = component.population
-    return stars.population(Path(name) if name.endswith(".ecsv") else name, band)
+    return Path(name) if Path(name).suffix else name
+
+
+def _population(component: Component, band: str) -> np.ndarray:
+    return stars.population(population_name(component), band)
 
 
 def _shares(component: Component) -> np.ndarray:

@@ -3,7 +3,9 @@
 from dataclasses import dataclass
 from functools import cached_property
 
-from starcount.forward.group import ACCURACY, GroupModel, make_census_model, make_group_model
+from starcount import stars
+from starcount.forward.census import make_census_model
+from starcount.forward.group import ACCURACY, GroupModel, make_group_model
 from starcount.forward.luminosity import CENSUS_POPULATION
 from starcount.galaxy import Galaxy
 from starcount.survey import Survey
@@ -16,21 +18,25 @@ FIT_ACCURACY = 3e-4
 class ForwardModel:
     """Expected counts of a survey in a Galaxy: one ``GroupModel`` a group, and the local census as one more.
 
-    ``accuracy`` is the part of a bin to which the integral along each sight line has settled.
+    ``accuracy`` is the part of a bin to which the integral along each sight line has settled. ``dust_range`` is the
+    factor by which the extinction of a field may be raised or lowered afterwards; room for it costs memory and time.
     """
 
     survey: Survey
     galaxy: Galaxy
     accuracy: float = ACCURACY
+    dust_range: float = 1.0
 
     @cached_property
     def groups(self) -> tuple[GroupModel, ...]:
         """The survey's groups, in its order."""
-        return tuple(make_group_model(group, self.galaxy, self.accuracy) for group in self.survey.groups)
+        return tuple(
+            make_group_model(group, self.galaxy, self.accuracy, self.dust_range) for group in self.survey.groups
+        )
 
     @cached_property
     def census(self) -> GroupModel | None:
-        """The local census, in the band of the first group; None where no component is made of it."""
+        """The local census, in the reference band of the first group; None where no component is made of it."""
         if not any(c.population == CENSUS_POPULATION for c in self.galaxy.components):
             return None
-        return make_census_model(self.galaxy, self.survey.groups[0].band)
+        return make_census_model(self.galaxy, stars.BANDS[self.survey.groups[0].band].reference)

@@ -9,7 +9,7 @@ from difflib import get_close_matches
 from importlib import resources
 from pathlib import Path
 
-from starcount.constants import STAR_CLASSES
+from starcount.constants import CLASS_WORDS
 from starcount.errors import Problem, Problems, UnknownName
 from starcount.galaxy.component import PRIORS, Component, Layer, Parameter
 from starcount.galaxy.galaxy import CENSUS, Z0, Galaxy
@@ -156,9 +156,9 @@ class _Reader:
         )
 
     def classes(self, where: str, given) -> tuple[str, ...] | None:
-        if isinstance(given, list) and given and set(map(str, given)) <= set(STAR_CLASSES):
+        if isinstance(given, list) and given and set(map(str, given)) <= set(CLASS_WORDS):
             return tuple(given)
-        self.wrong(where, repr(given), f"a list of {', '.join(map(repr, STAR_CLASSES))}")
+        self.wrong(where, repr(given), f"a list of {', '.join(map(repr, CLASS_WORDS))}")
         return None
 
     def parameter(self, name: str, given, law: LawParameter, default_prior="lognormal") -> Parameter:

@@ -2,11 +2,13 @@
 
 Counts constrain only density times luminosity function. Without this freedom a 20 % error of a tabulated function
 moves a fitted height by several times the error that the counts alone would claim. One curve corrects the thin disc's
-layers, another all old populations: ``lf = lf0 * exp(hat(M) @ c)``.
+layers, another all old populations: ``lf = lf0 * (hat(M_V) @ exp(c))``.
 
-The curve is linear between knots every 2 mag and flat outside them, so a coefficient is the logarithm of the correction
-at its knot. Its prior: second differences scatter by ``BEND``, the mean level by ``LEVEL``, each knot by ``WIDTH``. The
-curve averages to zero over the reference window, where the amplitude alone sets the number of stars.
+The factor is linear in M_V between knots every 2 mag and constant outside them, whatever the band of the counts, so
+that one curve serves all groups, and the luminosity matrix is linear in the factor. A coefficient is the logarithm of
+the factor at its knot. Prior: second differences scatter by ``BEND``, the mean level by ``LEVEL``, each knot by
+``WIDTH``. The coefficients average to zero over the reference window, where the amplitude alone sets the number of
+stars.
 """
 
 from collections.abc import Sequence
@@ -17,9 +19,9 @@ import pymc as pm
 from scipy import linalg
 
 from starcount.constants import REFERENCE_WINDOW_MV_MAG
+from starcount.forward.knots import KNOTS_MAG, hat
 from starcount.forward.luminosity import CENSUS_POPULATION
 
-KNOTS_MAG = np.arange(-2.0, 16.1, 2.0)
 BEND = 0.10
 LEVEL = 0.05
 WIDTH = 0.30
@@ -48,11 +50,6 @@ class Curve:
         u = pm.Normal(f"u.curve.{self.name}", 0.0, 1.0, shape=self.spread.shape[1])
         # Not a matrix product: over those PyTensor looks for a BLAS of its own and warns that it finds none.
         return pm.Deterministic(f"curve.{self.name}", (self.spread * u).sum(axis=1), dims=DIMENSION)
-
-
-def hat(M_mag: np.ndarray) -> np.ndarray:
-    """Return the weight of each knot at absolute magnitudes: (cell, knot); rows sum to 1."""
-    return np.stack([np.interp(M_mag, KNOTS_MAG, row) for row in np.eye(KNOTS_MAG.size)], axis=1)
 
 
 def curves(components: Sequence, M_edges_mag: np.ndarray) -> tuple[Curve, ...]:

@@ -22,7 +22,7 @@ class Done:
     v: np.ndarray
     W: np.ndarray
     ln_dust: np.ndarray
-    lf_shape: tuple[int, ...]
+    shape: tuple[int, ...]
     counts: np.ndarray
 
     def pull_back(self, cotangent: np.ndarray) -> list[np.ndarray]:
@@ -32,8 +32,8 @@ class Done:
         by_v, by_W, by_dust = kernels.project_back(
             self.v, self.W, self.ln_dust, np.ascontiguousarray(cotangent), want_W, *call.geometry
         )
-        if want_W and call.lf_arrays is not None:
-            by_W = kernels.luminosity_back(by_W, self.lf_shape, *call.lf_arrays)
+        if want_W and call.pieces is not None:
+            by_W = kernels.luminosity_back(by_W, self.shape, *call.pieces)
         return [g for g, moves in zip((by_v, by_W, by_dust), call.moves, strict=True) if moves]
 
 
@@ -41,8 +41,9 @@ class Done:
 class KernelCall:
     """One call of the projection in a graph.
 
-    ``inputs`` are its variables v, luminosity function (or matrix, where that is data) and ln_dust; ``moves`` says
-    which of them depend on the fitted numbers, ``moving`` are those; ``counts`` is the variable of its result.
+    ``inputs`` are its variables v, factors on the luminosity functions (or the matrix, where that is data) and
+    ln_dust; ``moves`` says which of them depend on the fitted numbers, ``moving`` are those; ``counts`` is the variable
+    of its result; ``pieces`` the arrays that turn the factors into a matrix.
     """
 
     kernels: object
@@ -50,16 +51,16 @@ class KernelCall:
     moves: tuple[bool, bool, bool]
     counts: object
     geometry: tuple[np.ndarray, ...]
-    lf_arrays: tuple[np.ndarray, ...] | None
+    pieces: tuple[np.ndarray, ...] | None
 
     @property
     def moving(self) -> list:
         return [one for one, moves in zip(self.inputs, self.moves, strict=True) if moves]
 
-    def __call__(self, v: np.ndarray, lf_or_W: np.ndarray, ln_dust: np.ndarray) -> Done:
-        v, lf_or_W, ln_dust = (np.ascontiguousarray(one) for one in (v, lf_or_W, ln_dust))
-        W = lf_or_W if self.lf_arrays is None else self.kernels.luminosity(lf_or_W, *self.lf_arrays)
-        return Done(self, v, W, ln_dust, lf_or_W.shape, self.kernels.project(v, W, ln_dust, *self.geometry))
+    def __call__(self, v: np.ndarray, factors_or_W: np.ndarray, ln_dust: np.ndarray) -> Done:
+        v, factors_or_W, ln_dust = (np.ascontiguousarray(one) for one in (v, factors_or_W, ln_dust))
+        W = factors_or_W if self.pieces is None else self.kernels.luminosity(factors_or_W, *self.pieces)
+        return Done(self, v, W, ln_dust, factors_or_W.shape, self.kernels.project(v, W, ln_dust, *self.geometry))
 
 
 def kernel_calls(outputs: Sequence, value_vars: Sequence) -> list[KernelCall]:
@@ -70,11 +71,11 @@ def kernel_calls(outputs: Sequence, value_vars: Sequence) -> list[KernelCall]:
 
 def _kernel_call(node, value_vars: set) -> KernelCall:
     v, W, ln_dust, *geometry = node.inputs
-    lf_arrays = None
+    pieces = None
     if W.owner is not None and isinstance(W.owner.op, Luminosity):
         W, *arrays = W.owner.inputs
-        lf_arrays = tuple(one.get_value(borrow=True) for one in arrays)
+        pieces = tuple(one.get_value(borrow=True) for one in arrays)
     inputs = (v, W, ln_dust)
     moves = tuple(not value_vars.isdisjoint(ancestors([one])) for one in inputs)
     kept = tuple(one.get_value(borrow=True) for one in geometry)
-    return KernelCall(node.op.kernels, inputs, moves, node.outputs[0], kept, lf_arrays)
+    return KernelCall(node.op.kernels, inputs, moves, node.outputs[0], kept, pieces)

@@ -47,11 +47,12 @@ def build_model(
     with pm.Model(coords={curve.DIMENSION: curve.KNOTS_MAG}) as model:
         values = {p.name: priors.variable(p) for p in chosen}
         v = forward_model.galaxy.vector(values, xp=pt)
-        shape = _lf_factor(components) if lf_curve else None
+        found = curve.curves(components, M_EDGES_MAG) if lf_curve else ()
+        factors, owner = (_factors(found), curve.owners(found, components)) if lf_curve else (None, None)
         for name, group in groups.items():
             law = likelihoods.find("poisson") if name == CENSUS else scatter
             floor = priors.variable(floor_of(name)) if law.HAS_FLOOR else None
-            _observe(name, group, law, floor, _expected(name, group, v, shape, kernels))
+            _observe(name, group, law, floor, _expected(name, group, v, factors, owner, kernels))
     return model
 
 
@@ -143,13 +144,9 @@ def _check(forward_model, chosen, groups) -> None:
         raise InputError(f"fields overlap in the same bins: {first} (and {len(overlapping) - 1} more pairs)")
 
 
-def _lf_factor(components: Sequence):
-    """The correction of the luminosity functions (layer, cell) by the smooth curves, and 1 where there is none."""
-    middle = 0.5 * (M_EDGES_MAG[1:] + M_EDGES_MAG[:-1])
-    found = curve.curves(components, M_EDGES_MAG)
-    weights = _data("curve.weights", curve.hat(middle))
-    rows = [pt.zeros(middle.size), *((weights * c.variable()).sum(axis=1) for c in found)]
-    return pt.exp(pt.stack(rows))[curve.owners(found, components)]
+def _factors(found: Sequence[curve.Curve]):
+    """The factors (1 + curve, knot) of the smooth curves on the luminosity functions; the first is 1 everywhere."""
+    return pt.exp(pt.stack([pt.zeros(curve.KNOTS_MAG.size), *(c.variable() for c in found)]))
 
 
 def _data(name: str, array: np.ndarray):
@@ -160,15 +157,16 @@ def _data(name: str, array: np.ndarray):
     return variable
 
 
-def _expected(name: str, group, v, shape, kernels: Kernels):
+def _expected(name: str, group, v, factors, owner: np.ndarray | None, kernels: Kernels):
+    """The counts expected of a group; ``owner`` (layer,) is the row of ``factors`` of each layer."""
     geometry = [_data(f"{name}.geometry{i}", a) for i, a in enumerate(group.projection.arrays)]
-    if shape is None:
-        W = _data(f"{name}.luminosity", group.luminosity_matrix(group.lf))
+    if factors is None:
+        W = _data(f"{name}.luminosity", group.luminosity_matrix())
     else:
-        lf = _data(f"{name}.lf", group.lf) * shape[:, None, :]
-        W = Luminosity(kernels)(lf, *(_data(f"{name}.lf{i}", a) for i, a in enumerate(group.lf_arrays)))
+        arrays = (owner[group.matrix.layer], *group.matrix.pieces)
+        W = Luminosity(kernels)(factors, *(_data(f"{name}.luminosity{i}", a) for i, a in enumerate(arrays)))
     ln_dust = _data(f"{name}.ln_dust", np.zeros(group.counts.shape[0]))
-    expected = ExpectedCounts(kernels, fixed_luminosity=shape is None)(v, W, ln_dust, *geometry)
+    expected = ExpectedCounts(kernels, fixed_luminosity=factors is None)(v, W, ln_dust, *geometry)
     if len(group.extra):
         expected = expected + _data(f"{name}.extra", np.sum(group.extra, axis=0))
     return expected

@@ -113,11 +113,11 @@ class ExpectedCountsBack(_Projection):
 
 
 class Luminosity(_KernelOp):
-    """The luminosity matrix W (row, bin) of a luminosity function (layer, class, cell): linear."""
+    """The luminosity matrix W (row, bin) of the factors (curve, knot) on the luminosity functions: linear."""
 
-    def make_node(self, lf, *arrays):
-        inputs = [pt.as_tensor_variable(x) for x in (lf, *arrays)]
-        _require_floats(self, inputs[:1], (3,))
+    def make_node(self, factors, *arrays):
+        inputs = [pt.as_tensor_variable(x) for x in (factors, *arrays)]
+        _require_floats(self, inputs[:1], (2,))
         return Apply(self, inputs, [pt.dmatrix()])
 
     def perform(self, node, inputs, outputs):
@@ -136,15 +136,15 @@ class Luminosity(_KernelOp):
 
 
 class LuminosityBack(_KernelOp):
-    """The transpose of ``Luminosity``; of the luminosity function itself only the shape matters."""
+    """The transpose of ``Luminosity``; of the factors themselves only the shape matters."""
 
-    def make_node(self, lf, cotangent, *arrays):
-        inputs = [pt.as_tensor_variable(x) for x in (lf, cotangent, *arrays)]
-        return Apply(self, inputs, [pt.dtensor3()])
+    def make_node(self, factors, cotangent, *arrays):
+        inputs = [pt.as_tensor_variable(x) for x in (factors, cotangent, *arrays)]
+        return Apply(self, inputs, [pt.dmatrix()])
 
     def perform(self, node, inputs, outputs):
-        lf, cotangent, *arrays = inputs
-        outputs[0][0] = self.kernels.luminosity_back(np.ascontiguousarray(cotangent), lf.shape, *arrays)
+        factors, cotangent, *arrays = inputs
+        outputs[0][0] = self.kernels.luminosity_back(np.ascontiguousarray(cotangent), factors.shape, *arrays)
 
     def infer_shape(self, *args):
         return [args[-1][0]]
@@ -188,8 +188,8 @@ def _compile_luminosity(op, node=None, **_):
     luminosity = op.kernels.luminosity
 
     @numba_njit
-    def luminosity_matrix(lf, *arrays):
-        return luminosity(np.ascontiguousarray(lf), *arrays)
+    def luminosity_matrix(factors, *arrays):
+        return luminosity(np.ascontiguousarray(factors), *arrays)
 
     return luminosity_matrix, _SALT
 
@@ -199,7 +199,7 @@ def _compile_luminosity_back(op, node=None, **_):
     luminosity_back = op.kernels.luminosity_back
 
     @numba_njit
-    def luminosity_matrix_back(lf, cotangent, *arrays):
-        return luminosity_back(np.ascontiguousarray(cotangent), lf.shape, *arrays)
+    def luminosity_matrix_back(factors, cotangent, *arrays):
+        return luminosity_back(np.ascontiguousarray(cotangent), factors.shape, *arrays)
 
     return luminosity_matrix_back, _SALT

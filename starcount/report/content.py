@@ -10,6 +10,7 @@ import numpy as np
 from astropy.table import Table
 
 from starcount.predict import Prediction
+from starcount.survey import Group
 
 SUPERSCRIPTS = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 
@@ -95,3 +96,12 @@ class PageContent:
     def counted_groups(self) -> tuple[str, ...]:
         """The names of the groups that hold counts to compare with."""
         return tuple(name for name, group in self.prediction.groups.items() if group.compared.any())
+
+    @property
+    def coloured_groups(self) -> tuple[str, ...]:
+        """The names of the groups that are divided in colour."""
+        return tuple(name for name, group in self.prediction.groups.items() if _colours(group.group) > 1)
+
+
+def _colours(group: Group) -> int:
+    return 1 if group.edges_colour_mag is None else group.edges_colour_mag.size - 1

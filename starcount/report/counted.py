@@ -8,7 +8,7 @@ from astropy.table import QTable
 from starcount.dust import DUST
 from starcount.predict import Prediction
 from starcount.stars import BANDS
-from starcount.survey import Completeness, Group, PhotometricError
+from starcount.survey import ColourError, Completeness, Group, PhotometricError
 
 
 def counted_rows(prediction: Prediction) -> list[tuple[str, dict[str, str]]]:
@@ -17,26 +17,59 @@ def counted_rows(prediction: Prediction) -> list[tuple[str, dict[str, str]]]:
 
 
 def _counted(group: Group, compared: np.ndarray) -> dict[str, str]:
-    fields = group.fields
+    fields, seen = group.fields, group.observation
     return {
-        "band": f"{BANDS[group.band].description} ({BANDS[group.band].system} system; {BANDS[group.band].source})",
-        "bins": _bins(group.edges_mag),
+        "band": _band(group.band),
+        "bins": _bins(group.edges_mag, "bright", "faint"),
+        **(_colour(group) if group.colour else {}),
         "fields": f"{len(fields.name)} with {np.sum(fields.area_deg2):.6g} deg² in all",
         "stars counted": _stars(group, compared),
         "dust": _dust(fields),
-        "completeness": _completeness(group.observation.completeness),
-        "photometric error": _error(group.observation.error),
+        "completeness": _completeness(seen.completeness),
+        "photometric error": _error(seen.error),
+        **(
+            {"resolution": f"pairs wider than {group.resolution_arcsec:g} arcsec are two stars"}
+            if group.resolution_arcsec
+            else {}
+        ),
         "extra rows": ", ".join(group.extra) or "none",
     }
 
 
-def _bins(edges_mag: np.ndarray) -> str:
+def _band(name: str) -> str:
+    band = BANDS[name]
+    return f"{band.description} ({band.system} system, {band.magnitudes} magnitudes; {band.source})"
+
+
+def _colour(group: Group) -> dict[str, str]:
+    """What a group with a colour has more than others."""
+    blue, red = group.colour
+    error, bias = group.observation.colour_error, group.observation.faint_BP
+    return {
+        "colour": f"{blue} − {red}: {_band(blue)}; {_band(red)}",
+        "bins in colour": _bins(group.edges_colour_mag, "blue", "red"),
+        "error of the colour": "none" if error is None else _error(error),
+        **({"BP of faint stars": "biased by transits that are left out, as modelled"} if bias else {}),
+    }
+
+
+def _bins(edges_mag: np.ndarray, low: str, high: str) -> str:
+    finite = edges_mag[np.isfinite(edges_mag)]
+    open_ends = (np.isneginf(edges_mag[0]), "all bluer ones"), (np.isposinf(edges_mag[-1]), "all redder ones")
+    ends = [words for is_open, words in open_ends if is_open]
+    beyond = f"; open bins hold {' and '.join(ends)}" if ends else ""
+    return f"{_closed(finite)}{beyond}; closed at the {low} and open at the {high} edge"
+
+
+def _closed(edges_mag: np.ndarray) -> str:
     widths = np.diff(edges_mag)
+    if widths.size == 0:
+        return f"none closed, parted at {', '.join(f'{edge:.4g}' for edge in edges_mag)} mag"
     if np.allclose(widths, widths[0]):
         how = f"{widths.size} of {widths[0]:.4g} mag"
     else:
         how = f"{widths.size}, {widths.min():.4g} to {widths.max():.4g} mag wide"
-    return f"{how} from {edges_mag[0]:.4g} to {edges_mag[-1]:.4g} mag, closed at the bright and open at the faint edge"
+    return f"{how} from {edges_mag[0]:.4g} to {edges_mag[-1]:.4g} mag"
 
 
 def _stars(group: Group, compared: np.ndarray) -> str:
@@ -56,10 +89,11 @@ def _completeness(curve: Completeness | None) -> str:
     if curve is None:
         return "every star counted"
     m_mag, share = curve.m_mag, curve.share
-    return f"a curve from {m_mag[0]:.4g} to {m_mag[-1]:.4g} mag, {share.min():.3g} to {share.max():.3g}"
+    how = "a curve" if curve.c_mag is None else "a table in magnitude and colour"
+    return f"{how} from {m_mag[0]:.4g} to {m_mag[-1]:.4g} mag, {share.min():.3g} to {share.max():.3g}"
 
 
-def _error(error: PhotometricError | None) -> str:
+def _error(error: PhotometricError | ColourError | None) -> str:
     if error is None:
         return "none"
     scatter_mag, largest_mag = error.scatter_mag, np.abs(error.offset_mag).max()
@@ -87,7 +121,7 @@ ALWAYS = (
     "discs trade against each other. Compare surface densities and effective heights before single parameters.",
     "Counts constrain the product of density and luminosity function only. An error of the one looks like an error of "
     "the other.",
-    "Unresolved binaries count as one star; how many are resolved depends on the survey.",
+    "Unresolved binaries count as one star; how many are resolved depends on the survey and its resolution.",
 )
 SMOOTH_DUST = "The dust is smooth and knows no single cloud; fields at low latitude depend on it most."
 FITTED = "The intervals are those of this model and these priors; what the model leaves out is not in them."
@@ -97,7 +131,7 @@ def cautions(prediction: Prediction, fitted: bool) -> tuple[str, ...]:
     """What the reader should keep in mind about any such page."""
     fields = [group.group.fields for group in prediction.groups.values()]
     low = any((np.abs(field.b_deg[field.dust == "D0"]) < LOW_LATITUDE_DEG).any() for field in fields)
-    return (*ALWAYS, *([SMOOTH_DUST] if low else []), *([FITTED] if fitted else []))
+    return (*prediction.cautions(), *ALWAYS, *([SMOOTH_DUST] if low else []), *([FITTED] if fitted else []))
 
 
 def flattened(provenance: Mapping, prefix: str = "") -> list[tuple[str, str]]:

@@ -18,7 +18,7 @@ LONGEST_NAME = 28
 
 @styled
 def counts_by_latitude(content: PageContent, group: str) -> Figure:
-    """Counts per bin, fields of a latitude band added up, with the model's parts and ln(n / expected)."""
+    """Counts per magnitude bin with the model's parts and ln(n / expected), fields of a latitude band added up."""
     prediction = content.prediction.groups[group]
     return _panels(tuple(latitude_bands(prediction).values()), prediction.group.band)
 
@@ -71,8 +71,8 @@ def _panels(bands: Sequence[Band], band_name: str) -> Figure:
 
 def _draw_counts(axes, band: Band) -> None:
     unit, edges = band.per_deg2_mag, band.edges_mag
-    for (name, counts), (colour, dashes) in zip(band.parts.items(), _lines(len(band.parts)), strict=True):
-        axes.stairs(counts / unit, edges, color=colour, linestyle=dashes, label=_plain(name), baseline=None, zorder=3)
+    for (name, counts), (colour, dashes) in zip(band.parts.items(), component_lines(len(band.parts)), strict=True):
+        axes.stairs(counts / unit, edges, color=colour, linestyle=dashes, label=plain(name), baseline=None, zorder=3)
     axes.stairs(band.total.expected / unit, edges, color=BLACK, linewidth=1.8, label="model", baseline=None)
     if band.draws is not None:
         low, high = np.percentile(band.draws, [2.5, 97.5], axis=0) / unit
@@ -96,11 +96,13 @@ def _draw_counts(axes, band: Band) -> None:
     axes.set_title(band.label, loc="left", parse_math=False, fontsize=7.5)
 
 
-def _lines(number: int):
+def component_lines(number: int) -> list[tuple]:
+    """Colour and dashes of so many components, in their order."""
     return [LINES[i % len(LINES)] for i in range(number)]
 
 
-def _plain(name: str) -> str:
+def plain(name: str) -> str:
+    """A name from a user's file as plain letters: matplotlib reads formulas between dollars."""
     return name.replace("_", " ").replace("$", "")
 
 

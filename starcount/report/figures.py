@@ -5,7 +5,7 @@ from dataclasses import dataclass
 
 from matplotlib.figure import Figure
 
-from starcount.report import counts, curves, posteriors, sky
+from starcount.report import colours, counts, curves, posteriors, sky
 from starcount.report.content import PageContent
 from starcount.report.style import VERMILION, style
 
@@ -49,6 +49,26 @@ FIGURES = {
         lambda content: content.counted_groups,
         caption="Group {part}: the same for the single fields whose totals are least probable, worst first.",
         alt="Counts per magnitude bin of the fields that fit worst, group {part}",
+    ),
+    "colour-magnitude": FigureKind(
+        colours.colour_magnitude,
+        lambda content: content.coloured_groups,
+        caption="Group {part}: colour-magnitude diagrams, the fields of a latitude band added up. Shades: stars per "
+        "square degree and square magnitude, relative to the densest expected cell of the band; white: no star. Where "
+        "there are counts: counted, expected, and ln(counted / expected) in cells with 25 stars or more, counted or "
+        "expected; dots mark cells more than 3 standard deviations of the prediction off, noise included; grey: not "
+        "used, or too few stars for a ratio. Bins that are open to one side lie behind a broken line, with an arrow; "
+        "they are drawn as wide as the bin beside them, and divided by that width.",
+        alt="Colour-magnitude diagrams by latitude band, counted, expected and their ratio, group {part}",
+    ),
+    "colours": FigureKind(
+        colours.colour_distributions,
+        lambda content: content.coloured_groups,
+        caption="Group {part}: stars per square degree and magnitude of colour, in slices of magnitude (columns) and "
+        "bands of latitude (rows), fields added up. Steps: the model and its components. Points: counts with Poisson "
+        "errors. The grey band holds 95 % of the draws of the model, where it was fitted. Open bins as in the "
+        "colour-magnitude diagram; bins that no field uses are in no sum.",
+        alt="Distribution of colours by magnitude and latitude, with model components, group {part}",
     ),
     "sky": FigureKind(
         sky.sky_residuals,

@@ -110,6 +110,8 @@ def cell(value) -> str:
         return "yes" if value else "no"
     if isinstance(value, (int, np.integer)):
         return str(int(value))
+    if isinstance(value, (float, np.floating)) and not np.isfinite(value):
+        return "–" if np.isnan(value) else ("∞" if value > 0 else "−∞")
     if isinstance(value, (float, np.floating)):
         whole = LARGE <= abs(value) < 1e15
         return (f"{float(value):.0f}" if whole else f"{float(value):.4g}").replace("-", "−")

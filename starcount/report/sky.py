@@ -114,7 +114,7 @@ def _draw_bands(axes, bands: dict[int, Band]) -> None:
         # Side by side within the bin, so that the error bars of the bands do not hide one another.
         at = edges[:-1] + np.diff(edges) * (0.25 + 0.5 * (place + 0.5) / (len(LATITUDES_DEG) - 1))
         axes.errorbar(
-            at[seen], total.ln_ratio[seen], (total.sd / total.expected)[seen], fmt=marker + "-", color=colour,
+            at[seen], total.ln_ratio[seen], total.sd[seen] / total.expected[seen], fmt=marker + "-", color=colour,
             label=band_label(place), linewidth=0.7, elinewidth=0.7,
         )  # fmt: skip
 

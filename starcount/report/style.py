@@ -32,6 +32,9 @@ MARKS = ((BLUE, "o"), (VERMILION, "s"), (GREEN, "^"), (PURPLE, "D"), (ORANGE, "v
 DIVERGING = "RdBu_r"
 """The map of signed residuals: ColorBrewer's red-white-blue, safe for colour-blind readers; zero is white."""
 
+AMOUNTS = "YlGnBu"
+"""The map of amounts, darker for more: ColorBrewer's yellow-green-blue, safe for colour-blind readers."""
+
 WIDTH_INCH = 175 / 25.4
 """A journal's full page width."""
 

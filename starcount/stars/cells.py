@@ -1,19 +1,38 @@
-"""The cells of absolute magnitude that every luminosity function is spread over."""
+"""The cells of absolute magnitude and colour that every luminosity function is spread over."""
 
 import numpy as np
 from scipy.interpolate import PchipInterpolator
 
-from starcount.constants import REFERENCE_WINDOW_MV_MAG, STAR_CLASSES
+from starcount.constants import EVOLVED_CLASSES, REFERENCE_WINDOW_MV_MAG, STAR_CLASSES
 
 CLASSES = STAR_CLASSES
-"""What a star is: on the main sequence, on its way from it (subgiants, giants), or a white dwarf."""
+"""What a star is: on the main sequence; leaving it, up the giant branch, burning helium in its core; a white dwarf."""
+
+EVOLVED = tuple(CLASSES.index(name) for name in EVOLVED_CLASSES)
+"""The classes that "evolved" stands for, as indices of ``CLASSES``."""
 
 M_EDGES_MAG = np.round(np.linspace(-8.0, 22.0, 601), 2)
 """Edges of the cells of absolute magnitude, (cell + 1,)."""
 M_EDGES_MAG.setflags(write=False)
 
+M_MIDDLE_MAG = (M_EDGES_MAG[1:] + M_EDGES_MAG[:-1]) / 2
+"""Middles of the cells of absolute magnitude, (cell,)."""
+M_MIDDLE_MAG.setflags(write=False)
 
-def spread(edges_mag: np.ndarray, totals: np.ndarray) -> np.ndarray:
+C_EDGES_MAG = np.round(np.linspace(-1.5, 7.0, 171), 2)
+"""Edges of the cells of intrinsic colour, (colour cell + 1,): the end cells also hold everything beyond."""
+C_EDGES_MAG.setflags(write=False)
+
+CELL_MAG = 0.05
+"""Width of a cell of magnitude and of one of colour."""
+
+
+def members(word: str) -> tuple[int, ...]:
+    """Return the indices of the classes that a word of ``CLASS_WORDS`` stands for."""
+    return EVOLVED if word == "evolved" else (CLASSES.index(word),)
+
+
+def to_cells(edges_mag: np.ndarray, totals: np.ndarray) -> np.ndarray:
     """Spread the totals (row,) between ``edges_mag`` (row + 1,) over the cells; return (cell,).
 
     The cumulative is interpolated by monotone cubics (Fritsch & Carlson 1980), so no cell is negative and every row
@@ -30,7 +49,7 @@ def spread(edges_mag: np.ndarray, totals: np.ndarray) -> np.ndarray:
 
 def cell_range(M_lo_mag: float, M_hi_mag: float) -> slice:
     """Return the cells between two cell edges."""
-    first, last = np.round((np.array([M_lo_mag, M_hi_mag]) - M_EDGES_MAG[0]) * 20).astype(int)
+    first, last = np.round((np.array([M_lo_mag, M_hi_mag]) - M_EDGES_MAG[0]) / CELL_MAG).astype(int)
     return slice(first, last)
 
 

@@ -5,8 +5,9 @@ from itertools import pairwise
 
 import numpy as np
 
+from starcount.constants import CLASS_WORDS
 from starcount.errors import InputError, UnknownName
-from starcount.stars.cells import CLASSES, M_EDGES_MAG
+from starcount.stars.cells import CLASSES, M_EDGES_MAG, members
 
 RAMP_MAG = 0.25
 """Half width of the linear ramps between layers: the function of a layer may not jump with a star's magnitude."""
@@ -15,18 +16,20 @@ RAMP_MAG = 0.25
 def layer_shares(layers: Sequence) -> np.ndarray:
     """Return the share (layer, class, cell) of the stars of each class and cell that belong to each layer.
 
-    A layer has ``classes``, a tuple of class names, and ``M_mag``, its (lo, hi). Over the layers that hold a class the
-    shares sum to 1: at a limit between two layers they cross in a ramp of +-0.25 mag, the brightest layer of a class
-    also holds everything brighter, the faintest everything fainter. A class held by no layer has the share 0.
+    A layer has ``classes``, a tuple of class names ("evolved" stands for its four), and ``M_mag``, its (lo, hi). Over
+    the layers that hold a class the shares sum to 1: at a limit between two layers they cross in a ramp of +-0.25 mag,
+    the brightest layer of a class also holds everything brighter, the faintest everything fainter. A class held by no
+    layer has the share 0.
     Raises ``InputError`` where the layers of a class overlap or leave a gap.
     """
     shares = np.zeros((len(layers), len(CLASSES), M_EDGES_MAG.size - 1))
     for layer in layers:
         for name in layer.classes:
-            if name not in CLASSES:
-                raise UnknownName("class of stars", name, CLASSES)
+            if name not in CLASS_WORDS:
+                raise UnknownName("class of stars", name, CLASS_WORDS)
+    held = [{c for word in layer.classes for c in members(word)} for layer in layers]
     for c, name in enumerate(CLASSES):
-        holding = sorted((layer.M_mag, i) for i, layer in enumerate(layers) if name in layer.classes)
+        holding = sorted((layer.M_mag, i) for i, layer in enumerate(layers) if c in held[i])
         limits = _limits(name, [M_mag for M_mag, _ in holding])
         fainter = [np.ones(M_EDGES_MAG.size - 1), *map(_share_fainter, limits), np.zeros(M_EDGES_MAG.size - 1)]
         for k, (_, i) in enumerate(holding):

@@ -14,7 +14,7 @@ from starcount.steps import folder, record
 from starcount.steps.record import Run
 from starcount.survey import Survey, overlapping_fields, read_survey, write_survey
 
-__all__ = ["Run", "check", "count", "demo", "fit", "laws", "predict", "report"]
+__all__ = ["Run", "check", "count", "demo", "fit", "laws", "population", "predict", "report"]
 
 Progress = Callable[[str, float], None]
 DEMO_SURVEY = Path("fields") / "demo"
@@ -78,21 +78,30 @@ def count(
 
 
 def predict(
-    survey: str | Path, *, galaxy: str | Path | None = None, run: str | None = None, progress: Progress = silent
+    survey: str | Path,
+    *,
+    galaxy: str | Path | None = None,
+    classes: bool = False,
+    run: str | None = None,
+    progress: Progress = silent,
 ) -> Run:
-    """Predict a survey's counts from a Galaxy's own values; write the tables to outputs/RUN."""
-    return _predict(survey, galaxy or "default", {}, run or f"{record.short_name(survey)}-prediction")
+    """Predict a survey's counts from a Galaxy's own values; write the tables to outputs/RUN.
+
+    ``classes`` splits the components by star class too.
+    """
+    run = run or f"{record.short_name(survey)}-prediction"
+    return _predict(survey, galaxy or "default", {}, run, classes, progress)
 
 
-def _predict(survey, galaxy, values: Mapping[str, float], run: str) -> Run:
+def _predict(survey, galaxy, values: Mapping[str, float], run: str, classes: bool, progress: Progress) -> Run:
     from starcount.forward import ForwardModel
     from starcount.predict import predict_counts
     from starcount.report import write_tables
 
     final = folder.run_path(run)
     model = ForwardModel(_read(survey), read_galaxy(galaxy))
-    prediction = predict_counts(model, values=values)
-    options = {"galaxy": str(galaxy), "values": dict(values)}
+    prediction = predict_counts(model, values=values, classes=classes, progress=progress)
+    options = {"galaxy": str(galaxy), "values": dict(values), "classes": classes}
     with folder.replaced(final) as part:
         inputs = record.keep_inputs(part, model.survey, survey, galaxy)
         written = record.write(part, final, "predict", options, inputs, record.of_prediction(prediction))
@@ -152,6 +161,23 @@ def report(run: str | Path, *, progress: Progress = silent) -> Run:
     return page.draw(folder.folder_of(run), progress)
 
 
+def population(
+    name: str | Path,
+    *,
+    band: str = "G",
+    colour: tuple[str, str] | None = None,
+    galaxy: str | Path | None = None,
+    out: str | Path | None = None,
+) -> Run:
+    """Show a population, by name or path, in a band and colour; write it to ``out`` (default outputs/population-NAME).
+
+    "census" is what the local census leaves to its component in the Galaxy, at the Sun.
+    """
+    from starcount.steps import populations
+
+    return populations.show(name, band, colour, galaxy or "default", out)
+
+
 def laws() -> dict:
     """The density laws and the published Galaxies, with parameters, units and sources."""
     return {
@@ -171,7 +197,7 @@ def demo(*, quick: bool = False, progress: Progress = silent) -> Run:
         write_demo(DEMO_SURVEY)
     truth = read_truth(DEMO_SURVEY)
     if quick:
-        _predict(DEMO_SURVEY, truth.galaxy, truth.values, DEMO_RUN)
+        _predict(DEMO_SURVEY, truth.galaxy, truth.values, DEMO_RUN, False, stretch(progress, 0, 0.9))
     else:
         options = {"galaxy": truth.galaxy, "free": list(truth.values), "run": DEMO_RUN, "accept_failed": True}
         fit(DEMO_SURVEY, **options, progress=stretch(progress, 0, 0.9))

@@ -13,7 +13,7 @@ from starcount.galaxy import Galaxy, law, published_names
 from starcount.galaxy.read import PUBLISHED
 from starcount.provenance import provenance
 from starcount.steps.folder import RECORD
-from starcount.survey import Survey, write_survey
+from starcount.survey import Group, Survey, write_survey
 
 FORMAT = 1
 POSTERIOR = "posterior.nc"
@@ -112,9 +112,10 @@ def of_survey(survey: Survey) -> dict:
                 "fields": len(group.fields),
                 "area_deg2": float(group.fields.area_deg2.sum()),
                 "sight_lines": int(group.sight_lines.l_deg.size),
-                "bins": group.edges_mag.size - 1,
+                "bins": group.n_bin,
                 "m_lo_mag": float(group.edges_mag[0]),
                 "m_hi_mag": float(group.edges_mag[-1]),
+                "colour": _colour(group),
                 "stars": None if group.counts is None else int(group.counts[group.used].sum()),
             }
             for group in survey.groups
@@ -122,18 +123,49 @@ def of_survey(survey: Survey) -> dict:
     }
 
 
+def _colour(group: Group) -> dict | None:
+    """The colour of a group: its bands, bins and limits, None at the end of an open bin; None without a colour."""
+    if group.colour is None:
+        return None
+    edges_mag = group.edges_colour_mag
+    return {
+        "bands": list(group.colour),
+        "bins": edges_mag.size - 1,
+        "c_lo_mag": _plain(edges_mag[0]),
+        "c_hi_mag": _plain(edges_mag[-1]),
+    }
+
+
 def of_prediction(prediction) -> dict:
-    """The totals of a prediction, group by group, and the bins that fit worst."""
+    """The totals of a prediction, group by group, and the bins that fit worst.
+
+    Limits of bins that are open, or of a colour that the bin's group does not have, are None.
+    """
     groups = {}
     for name, group in prediction.groups.items():
         compared = group.compared
         groups[name] = {
             "expected": float(group.expected.sum()),
             "parts": {part: float(counts.sum()) for part, counts in group.parts.items()},
+            "classes": _by_class(group.classes),
+            "outside": group.outside,
             "counted": int(group.group.counts[compared].sum()) if compared.any() else None,
             "expected_of_counted": float(group.expected[compared].sum()) if compared.any() else None,
         }
-    return {"source": prediction.source, "groups": groups, "worst_bins": rows(prediction.worst_bins(WORST))}
+    return {
+        "source": prediction.source,
+        "groups": groups,
+        "worst_bins": rows(prediction.worst_bins(WORST)),
+        "cautions": prediction.cautions(),
+    }
+
+
+def _by_class(classes: Mapping[tuple[str, str], np.ndarray]) -> dict[str, dict[str, float]]:
+    """Stars of each component by class, all fields and bins; empty where no classes were asked for."""
+    found: dict[str, dict[str, float]] = {}
+    for (component, star_class), counts in classes.items():
+        found.setdefault(component, {})[star_class] = float(counts.sum())
+    return found
 
 
 def of_posterior(posterior) -> dict:

@@ -1,5 +1,6 @@
-"""Observation model: which share of the stars of a true magnitude is counted in which bin."""
+"""Observation model: which share of the stars of a true magnitude and colour is counted in which bin."""
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from itertools import pairwise
 
@@ -7,65 +8,106 @@ import numpy as np
 from scipy.special import ndtr
 
 from starcount.errors import InputError
+from starcount.survey.curves import ColourError, Completeness, PhotometricError, mean_between
+from starcount.survey.faint_BP import FaintBP
+from starcount.survey.landing import NARROWEST_MAG, land
 
-WIDEST_MAG, FINEST_MAG = 0.05, 0.02
-"""True bins are half the scatter wide, within these limits. The stars of a true bin are taken as uniform within it; of
-counts that grow as exp(s m) that makes (s width)^2 / 12 too many: 4e-4 for uniform space, s = 0.6 ln 10 (measured)."""
 REACH = 5.0
 """Stars farther from a bin than this many times their scatter are left out: 3e-7 of them land in it."""
-
-
-@dataclass(frozen=True, eq=False)
-class Completeness:
-    """The probability ``share`` (node,) that a star of true magnitude ``m_mag`` (node,) is counted.
-
-    Linear between the nodes. Saturation is the same curve falling at its bright end.
-    """
-
-    m_mag: np.ndarray
-    share: np.ndarray
-
-
-@dataclass(frozen=True, eq=False)
-class PhotometricError:
-    """Catalogued minus true magnitude, by true magnitude ``m_mag``: mean and standard deviation, all (node,).
-
-    Linear between the nodes and constant beyond them.
-    """
-
-    m_mag: np.ndarray
-    offset_mag: np.ndarray
-    scatter_mag: np.ndarray
-
-    def at(self, m_mag) -> tuple[np.ndarray, np.ndarray]:
-        """Offset and scatter (mag) at true magnitudes."""
-        return np.interp(m_mag, self.m_mag, self.offset_mag), np.interp(m_mag, self.m_mag, self.scatter_mag)
+_STEP_MAG = 0.02
+"""Step in which the reach is looked for."""
+NODE_ERROR, NARROWEST_STEP_MAG = 7e-4, 0.1
+"""Between nodes the response in colour is a straight line: how far the share below any colour may be off half way, and
+how close nodes may come. A bin's share is then good to 1e-3, to 1.5e-3 where an error depends on colour, and to 5e-3
+beyond BP - RP = 3 where the bias of faint BP bends faster than such nodes can follow (measured)."""
+_COLOUR_CELL_MAG = 0.05
+"""Cells of true colour blur the response by this much even without any scatter."""
+_PROBED_COLOURS_MAG = np.arange(-0.5, 4.1, 0.5)
 
 
 @dataclass(frozen=True, eq=False)
 class Observation:
-    """How the stars of a group were seen; with neither part, every star in its own bin."""
+    """How the stars of a group were seen; with none of its parts, every star in its own bin.
+
+    Errors in magnitude and in colour are independent of one another. A star is counted with the probability that the
+    completeness gives at its true magnitude (and colour).
+    """
 
     completeness: Completeness | None = None
     error: PhotometricError | None = None
+    colour_error: ColourError | None = None
+    faint_BP: FaintBP | None = None
 
-    def matrix(self, edges_mag: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-        """Edges of the true bins (true + 1,), and the counted share (true, bin) of the stars of each of them.
+    @property
+    def completeness_in_colour(self) -> bool:
+        """Whether the completeness depends on colour, and so belongs to the response in colour."""
+        return self.completeness is not None and self.completeness.c_mag is not None
 
-        The share is the mean of the completeness over the true bin times the probability to be catalogued
-        in the bin, for stars uniform in the true bin with a Gaussian error.
-        Raises InputError where a table does not reach over the bins.
+    def reach(self, edges_mag: np.ndarray) -> tuple[float, float]:
+        """The brightest and faintest true magnitudes of which stars land in the bins."""
+        bright, faint = float(edges_mag[0]), float(edges_mag[-1])
+        if self.error is None:
+            return bright, faint
+        farthest = REACH * self.error.scatter_mag.max() + np.abs(self.error.offset_mag).max()
+        step = np.arange(0.0, farthest + _STEP_MAG, _STEP_MAG)
+        offset, scatter = self.error.at(bright - step)
+        brighter = step[bright - step + offset + REACH * scatter > bright].max(initial=-_STEP_MAG)
+        offset, scatter = self.error.at(faint + step)
+        fainter = step[faint + step + offset - REACH * scatter < faint].max(initial=-_STEP_MAG)
+        return float(bright - brighter - _STEP_MAG), float(faint + fainter + _STEP_MAG)
+
+    def magnitude_response(self, true_edges_mag: np.ndarray, edges_mag: np.ndarray) -> np.ndarray:
+        """The counted share (true, bin) of the stars of true cells (true + 1,) in bins (bin + 1,).
+
+        The mean of the completeness over the cell, unless it depends on colour, times the probability to be catalogued
+        in the bin, for stars uniform in the cell with a Gaussian error. Without errors that is the overlap of cell and
+        bin. Raises InputError where a table does not reach over the bins.
         """
-        if self.completeness is None and self.error is None:
-            return edges_mag, np.eye(edges_mag.size - 1)
         shortfall = self.shortfall(edges_mag)
         if shortfall:
             raise InputError(shortfall)
-        true_mag = self._true_edges(edges_mag)
-        landed = self._landed(true_mag, edges_mag)
-        if self.completeness is None:
-            return true_mag, landed
-        return true_mag, _mean(self.completeness.m_mag, self.completeness.share, true_mag)[:, None] * landed
+        true_edges_mag, edges_mag = np.asarray(true_edges_mag, float), np.asarray(edges_mag, float)
+        first, last = true_edges_mag[:-1], true_edges_mag[1:]
+        offset, scatter = np.zeros_like(first), np.zeros_like(first)
+        if self.error is not None:
+            offset, scatter = self.error.at((first + last) / 2.0)
+        response = _landed(first + offset, last + offset, scatter, edges_mag)
+        if self.completeness is None or self.completeness_in_colour:
+            return response
+        return response * mean_between(self.completeness.m_mag, self.completeness.share, true_edges_mag)[:, None]
+
+    def colour_response(self, m_mag: np.ndarray, true_edges_mag: np.ndarray, edges_mag: np.ndarray) -> np.ndarray:
+        """The share (k, cell, bin) of stars of a true colour cell (cell + 1,) in colour bins (bin + 1,).
+
+        At true magnitudes ``m_mag`` (k,). The mean of the completeness over the cell, if it depends on colour, times
+        the probability to be catalogued in the bin, for stars uniform in the cell. Open bins take everything beyond.
+        """
+        m_mag, true_edges_mag = np.asarray(m_mag, float), np.asarray(true_edges_mag, float)
+        moved = true_edges_mag + self._colour_offset(m_mag, true_edges_mag)
+        scatter = self._colour_scatter(m_mag, (true_edges_mag[1:] + true_edges_mag[:-1]) / 2.0)
+        # An offset that falls steeply with colour may squeeze a cell, or turn its ends round.
+        middle = (moved[:, 1:] + moved[:, :-1]) / 2.0
+        half = np.maximum(np.abs(moved[:, 1:] - moved[:, :-1]), NARROWEST_MAG) / 2.0
+        flat = (x.ravel() for x in (middle - half, middle + half, scatter))
+        response = _landed(*flat, np.asarray(edges_mag, float)).reshape(*middle.shape, -1)
+        if not self.completeness_in_colour:
+            return response
+        return response * self.completeness.in_cells(m_mag, true_edges_mag)[:, :, None]
+
+    def colour_nodes_mag(self, bright: float, faint: float) -> np.ndarray:
+        """True magnitudes (k,) between which the response in colour is a straight line to 1e-3.
+
+        A single one where it does not depend on magnitude.
+        """
+        tables = [t for t in (self.colour_error, self.completeness) if t is not None and t is not self._plain()]
+        if not tables and self.faint_BP is None:
+            return np.array([(bright + faint) / 2.0])
+        knots = [t.m_mag[(t.m_mag > bright) & (t.m_mag < faint)] for t in tables]
+        if self.faint_BP is not None:
+            knots.append(np.arange(bright, faint, 0.5))
+        knots = np.unique(np.concatenate([[bright, faint], *knots]))
+        probed = np.unique(np.concatenate([_PROBED_COLOURS_MAG, *(t.c_mag for t in tables if t.c_mag is not None)]))
+        return np.array([bright, *(m for a, b in pairwise(knots) for m in self._nodes(a, b, probed))])
 
     def shortfall(self, edges_mag: np.ndarray) -> str:
         """In words, how a table falls short of the bins; '' where it does not."""
@@ -74,83 +116,57 @@ class Observation:
     def shortfalls(self, edges_mag: np.ndarray) -> dict[str, str]:
         """The same for each table, by its key in the survey file."""
         found = {}
-        if self.error is not None:
-            found["photometric_error"] = _gap(self.error.m_mag, edges_mag[0], edges_mag[-1], "the bins reach")
+        for key, table in (("photometric_error", self.error), ("colour_error", self.colour_error)):
+            if table is not None:
+                found[key] = _gap(table.m_mag, edges_mag[0], edges_mag[-1], "the bins reach")
         if self.completeness is not None:
             reason = "the bins" + (" and the scatter into them" if self.error is not None else "") + " reach"
-            found["completeness"] = _gap(self.completeness.m_mag, *self._reach(edges_mag), reason)
+            found["completeness"] = _gap(self.completeness.m_mag, *self.reach(edges_mag), reason)
         return found
 
-    def _reach(self, edges_mag: np.ndarray) -> tuple[float, float]:
-        """The brightest and faintest true magnitudes of which stars land in the bins."""
-        bright, faint = edges_mag[0], edges_mag[-1]
-        if self.error is None:
-            return bright, faint
-        farthest = REACH * self.error.scatter_mag.max() + np.abs(self.error.offset_mag).max()
-        step = np.arange(0.0, farthest + FINEST_MAG, FINEST_MAG)
-        offset, scatter = self.error.at(bright - step)
-        bright -= step[bright - step + offset + REACH * scatter > bright].max(initial=-FINEST_MAG) + FINEST_MAG
-        offset, scatter = self.error.at(faint + step)
-        faint += step[faint + step + offset - REACH * scatter < faint].max(initial=-FINEST_MAG) + FINEST_MAG
-        return bright, faint
+    def _plain(self) -> Completeness | None:
+        """The completeness, where it is a matter of magnitude alone."""
+        return None if self.completeness_in_colour else self.completeness
 
-    def _true_edges(self, edges_mag: np.ndarray) -> np.ndarray:
-        """True bins that subdivide the bins and go on to both sides as far as stars come from."""
-        bright, faint = self._reach(edges_mag)
-        bounds = np.unique(np.concatenate([[bright], edges_mag, [faint]]))
-        parts = [_divided(lo, hi, self._width(lo, hi)) for lo, hi in pairwise(bounds)]
-        return np.concatenate([*parts, bounds[-1:]])
+    def _colour_offset(self, m_mag, c_mag) -> np.ndarray:
+        offset = np.zeros((len(m_mag), len(c_mag)))
+        if self.colour_error is not None:
+            offset += self.colour_error.at(m_mag, c_mag)[0]
+        if self.faint_BP is not None:
+            offset += self.faint_BP.offset_mag(m_mag, c_mag)
+        return offset
 
-    def _width(self, lo: float, hi: float) -> float:
-        if self.error is None:
-            return hi - lo if self._is_constant(lo, hi) else WIDEST_MAG
-        _, scatter = self.error.at(np.linspace(lo, hi, 9))
-        # Without any scatter the bins are only shifted, which needs no fine steps.
-        finest = scatter[scatter > 0.0].min(initial=np.inf) / 2.0
-        return float(np.clip(finest, FINEST_MAG, WIDEST_MAG))
-
-    def _is_constant(self, lo: float, hi: float) -> bool:
-        """Whether the completeness is the same all over a bin: then the bin need not be divided."""
-        inside = (self.completeness.m_mag > lo) & (self.completeness.m_mag < hi)
-        shares = np.append(
-            np.interp([lo, hi], self.completeness.m_mag, self.completeness.share), self.completeness.share[inside]
+    def _colour_scatter(self, m_mag, c_mag) -> np.ndarray:
+        return (
+            np.zeros((len(m_mag), len(c_mag))) if self.colour_error is None else self.colour_error.at(m_mag, c_mag)[1]
         )
-        return bool(np.ptp(shares) == 0.0)
 
-    def _landed(self, true_mag: np.ndarray, edges_mag: np.ndarray) -> np.ndarray:
-        """Probability (true, bin) that a star of a true bin is catalogued in a bin."""
-        if self.error is None:
-            return _overlap(true_mag[:-1, None], true_mag[1:, None], edges_mag)
-        offset, scatter = (x[:, None] for x in self.error.at((true_mag[:-1] + true_mag[1:]) / 2.0))
-        bright, faint = true_mag[:-1, None] + offset, true_mag[1:, None] + offset
-        sharp = scatter == 0.0
-        s = np.where(sharp, 1.0, scatter)
-        spread = s * (_area((edges_mag - bright) / s) - _area((edges_mag - faint) / s)) / (faint - bright)
-        uniform = np.clip((edges_mag - bright) / (faint - bright), 0.0, 1.0)
-        # Far from a bin the areas are equal but for rounding, which must not leave less than no stars.
-        return np.maximum(np.diff(np.where(sharp, uniform, spread), axis=1), 0.0)
+    def _nodes(self, bright: float, faint: float, probed: np.ndarray) -> Iterator[float]:
+        """Nodes after ``bright`` up to ``faint``: halved until the response half way is that of a straight line."""
+        if faint - bright > NARROWEST_STEP_MAG and self._bend(bright, faint, probed) > NODE_ERROR:
+            middle = (bright + faint) / 2.0
+            yield from self._nodes(bright, middle, probed)
+            yield from self._nodes(middle, faint, probed)
+        else:
+            yield faint
 
-
-def _overlap(bright, faint, edges_mag) -> np.ndarray:
-    return np.diff(np.clip((edges_mag - bright) / (faint - bright), 0.0, 1.0), axis=1)
-
-
-def _area(x: np.ndarray) -> np.ndarray:
-    """Integral of the normal distribution function from minus infinity to x: x Phi(x) + phi(x)."""
-    return x * ndtr(x) + np.exp(-(x**2) / 2.0) / np.sqrt(2.0 * np.pi)
+    def _bend(self, bright: float, faint: float, probed: np.ndarray) -> float:
+        """How far the counted share below any colour is off a straight line, half way between two magnitudes."""
+        m = np.array([bright, (bright + faint) / 2.0, faint])
+        offset = self._colour_offset(m, probed)[:, :, None]
+        scatter = np.hypot(self._colour_scatter(m, probed), _COLOUR_CELL_MAG / np.sqrt(12.0))[:, :, None]
+        share = np.ones_like(offset)
+        if self.completeness_in_colour:
+            share = self.completeness.at(m, probed)[:, :, None]
+        edges = offset[1] + scatter[1] * np.linspace(-3.0, 3.0, 25)
+        below = share * ndtr((edges - offset) / scatter)
+        return float(np.abs(below[1] - (below[0] + below[2]) / 2.0).max())
 
 
-def _mean(x: np.ndarray, y: np.ndarray, edges: np.ndarray) -> np.ndarray:
-    """Means, between neighbouring edges, of the straight lines through (x, y)."""
-    knots = np.union1d(x, edges)
-    heights = np.interp(knots, x, y)
-    total = np.concatenate([[0.0], np.cumsum(np.diff(knots) * (heights[1:] + heights[:-1]) / 2.0)])
-    return np.diff(np.interp(edges, knots, total)) / np.diff(edges)
-
-
-def _divided(lo: float, hi: float, width: float) -> np.ndarray:
-    """Edges of equal parts from lo to below hi, at most ``width`` wide."""
-    return np.linspace(lo, hi, int(np.ceil((hi - lo) / width - 1e-9)) + 1)[:-1]
+def _landed(first, last, scatter, edges) -> np.ndarray:
+    landed = np.empty((first.size, edges.size - 1))
+    land(first, last, scatter, edges, landed)
+    return landed
 
 
 def _gap(m_mag: np.ndarray, bright: float, faint: float, reason: str) -> str:

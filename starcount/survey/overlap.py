@@ -38,11 +38,26 @@ def overlapping_fields(survey: Survey | Group) -> list[Pair]:
 
 
 def _sharing_bins(one: Group, other: Group, first, second) -> np.ndarray:
-    """Whether pairs of fields have used bins that overlap, (pair,)."""
-    lo, hi = one.edges_mag[:-1, None], one.edges_mag[1:, None]
-    common = (np.minimum(hi, other.edges_mag[1:]) - np.maximum(lo, other.edges_mag[:-1])) > SAME_EDGE_MAG
-    touched = one.used.astype(np.int64) @ common.astype(np.int64) > 0
+    """Whether pairs of fields have used bins that hold the same stars, (pair,).
+
+    Bins of one colour must overlap in it too. A group without colour, or with another one, counts stars of every
+    colour of ours.
+    """
+    along_m = _common(one.edges_mag, other.edges_mag)
+    if one.colour == other.colour is not None:
+        along_c = _common(one.edges_colour_mag, other.edges_colour_mag)
+    else:
+        along_c = np.ones((one.n_bin // len(along_m), other.n_bin // along_m.shape[1]))
+    used = one.used.reshape(-1, *(len(x) for x in (along_m, along_c))).astype(float)
+    touched = np.einsum("fmc,cd->fmd", used, along_c, optimize=True)
+    touched = np.einsum("fmd,mn->fnd", touched, along_m, optimize=True).reshape(len(used), -1) > 0.0
     return np.any(touched[first] & other.used[second], axis=1)
+
+
+def _common(edges_mag: np.ndarray, other_mag: np.ndarray) -> np.ndarray:
+    """1 where bins (bin, other bin) overlap, else 0."""
+    overlap = np.minimum(edges_mag[1:, None], other_mag[1:]) - np.maximum(edges_mag[:-1, None], other_mag[:-1])
+    return (overlap > SAME_EDGE_MAG).astype(float)
 
 
 def _sharing_sky(one: Fields, other: Fields, same: bool) -> tuple[np.ndarray, np.ndarray]:

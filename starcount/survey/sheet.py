@@ -54,10 +54,13 @@ class Sheet:
             if name not in known:
                 self.report("columns", f"unknown column {name!r}", one_of(name, known))
 
-    def number(self, name: str, unit: u.Unit | None, required: bool = True, blanks: bool = False) -> np.ndarray:
+    def number(
+        self, name: str, unit: u.Unit | None, required: bool = True, blanks: bool = False, infinite: bool = False
+    ) -> np.ndarray:
         """A column of numbers in ``unit`` (None: a pure number), (row,); nan where absent or unusable.
 
-        ``required``: the column must be there; ``blanks``: cells without a value are allowed (``absent``).
+        ``required``: the column must be there; ``blanks``: cells without a value are allowed (``absent``);
+        ``infinite``: so are infinite values.
         """
         if not self._present(name, required):
             self._absent[name] = np.full(len(self), not required)
@@ -76,8 +79,9 @@ class Sheet:
         values[~masked] = np.asarray(column[~masked], float) * factor
         self._absent[name] = masked & blanks
         self.refuse(masked & (not blanks), name, "no value", "a number")
-        self.refuse(~masked & ~np.isfinite(values), name, _texts(values), "a finite number")
-        return np.where(np.isfinite(values), values, np.nan)
+        usable = np.isfinite(values) | (infinite & np.isinf(values))
+        self.refuse(~masked & ~usable, name, _texts(values), "a number" if infinite else "a finite number")
+        return np.where(usable, values, np.nan)
 
     def absent(self, name: str) -> np.ndarray:
         """Rows that were allowed to hold no value in this column of numbers, and do, (row,)."""

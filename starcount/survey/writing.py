@@ -9,11 +9,13 @@ import tomli_w
 from astropy.table import Column, MaskedColumn, Table
 
 from starcount.files import write_text
+from starcount.survey.bin_settings import COLOUR, MAGNITUDE
 from starcount.survey.bins import edges_from_range
 from starcount.survey.fields import Fields
+from starcount.survey.group_settings import is_path
 from starcount.survey.groups import Group, Survey
 from starcount.survey.reading import SETTINGS_FILE
-from starcount.survey.settings import FORMAT, is_path
+from starcount.survey.settings import FORMAT
 
 
 def write_survey(survey: Survey, folder: str | Path) -> Path:
@@ -40,10 +42,14 @@ def _head(survey: Survey) -> str:
 
 
 def _block(group: Group, names: dict[str, str], folder: Path) -> str:
-    keys = {"name": group.name, "band": group.band}
-    lines = "[[group]]\n" + tomli_w.dumps(keys) + _bins(group.edges_mag) + tomli_w.dumps(names)
+    text = "[[group]]\n" + tomli_w.dumps({"name": group.name, "band": group.band}) + _bins(group.edges_mag, MAGNITUDE)
+    if group.colour is not None:
+        text += tomli_w.dumps({"colour": group.colour}) + _bins(group.edges_colour_mag, COLOUR)
+    bias = group.observation.faint_BP
+    numbers = {"faint_BP_noise": bias and bias.noise_e_s, "resolution_arcsec": group.resolution_arcsec}
+    text += tomli_w.dumps(names | {key: value for key, value in numbers.items() if value is not None})
     extra = [_from(folder, path) if is_path(path) else path for path in group.extra]
-    return lines + (tomli_w.dumps({"extra": extra}) if extra else "")
+    return text + (tomli_w.dumps({"extra": extra}) if extra else "")
 
 
 def _from(folder: Path, path: str) -> str:
@@ -52,13 +58,13 @@ def _from(folder: Path, path: str) -> str:
     return Path(path).relative_to(folder).as_posix() if Path(path).is_relative_to(folder) else path
 
 
-def _bins(edges_mag: np.ndarray) -> str:
+def _bins(edges_mag: np.ndarray, keys: tuple[str, str]) -> str:
     """Bins as a range where that gives exactly these edges, else as a list."""
     start, stop = float(edges_mag[0]), float(edges_mag[-1])
     step = round((stop - start) / (edges_mag.size - 1), 10)
-    if step > 0.0 and np.array_equal(edges_from_range(start, stop, step), edges_mag):
-        return f"bins = {{ from = {start!r}, to = {stop!r}, step = {step!r} }}\n"
-    return tomli_w.dumps({"edges_mag": edges_mag.tolist()})
+    if 0.0 < step < np.inf and np.array_equal(edges_from_range(start, stop, step), edges_mag):
+        return f"{keys[0]} = {{ from = {start!r}, to = {stop!r}, step = {step!r} }}\n"
+    return tomli_w.dumps({keys[1]: edges_mag.tolist()})
 
 
 def _file_name(survey: Survey, group: Group, key: str) -> str:
@@ -71,15 +77,26 @@ def _tables(group: Group) -> dict[str, Table]:
     tables = {"fields": _field_table(group.fields)}
     if group.counts is not None:
         tables["counts"] = _count_table(group)
-    completeness, error = group.observation.completeness, group.observation.error
-    if completeness is not None:
-        tables["completeness"] = Table([_mag(completeness.m_mag, "m"), Column(completeness.share, "completeness")])
-    if error is not None:
-        columns = (error.m_mag, "m"), (error.offset_mag, "offset"), (error.scatter_mag, "scatter")
-        tables["photometric_error"] = Table([_mag(*column) for column in columns])
+    seen = group.observation
+    if seen.completeness is not None:
+        share = Column(seen.completeness.share.ravel(), "completeness")
+        tables["completeness"] = Table([*_axes(seen.completeness), share])
+    for key, error in (("photometric_error", seen.error), ("colour_error", seen.colour_error)):
+        if error is not None:
+            columns = (error.offset_mag, "offset"), (error.scatter_mag, "scatter")
+            tables[key] = Table([*_axes(error), *(_mag(values.ravel(), name) for values, name in columns)])
     if group.profiles:
         tables["profiles"] = _profile_table(group.profiles)
     return tables
+
+
+def _axes(curves) -> list[Column]:
+    """The column m and, where the curves depend on colour, c: a row for every pair, magnitude before colour."""
+    c_mag = getattr(curves, "c_mag", None)
+    if c_mag is None:
+        return [_mag(curves.m_mag, "m")]
+    m_mag, c_mag = np.meshgrid(curves.m_mag, c_mag, indexing="ij")
+    return [_mag(m_mag.ravel(), "m"), _mag(c_mag.ravel(), "c")]
 
 
 def _mag(values, name: str) -> Column:
@@ -115,14 +132,9 @@ def _used(values, name: str, used: np.ndarray, unit: u.Unit | None = None) -> Co
 
 def _count_table(group: Group) -> Table:
     field, column = np.nonzero(group.used)
-    return Table(
-        [
-            Column(group.fields.name[field], "field"),
-            _mag(group.edges_mag[column], "m_lo"),
-            _mag(group.edges_mag[column + 1], "m_hi"),
-            Column(group.counts[field, column], "n"),
-        ]
-    )
+    names = ("m_lo", "m_hi") if group.colour is None else ("m_lo", "m_hi", "c_lo", "c_hi")
+    limits = [_mag(getattr(group.bins, name)[column], name) for name in names]
+    return Table([Column(group.fields.name[field], "field"), *limits, Column(group.counts[field, column], "n")])
 
 
 def _profile_table(profiles) -> Table:

@@ -64,15 +64,16 @@ def first_at_least(mu, A, factor, y):
 
 @kernel
 def find_reach(s, factor, arrays, reach):
-    """Write the nodes of sight line ``s`` from and to which each layer can put stars into the bins: (layer, 2)."""
-    first_node, mu, A = arrays[11], arrays[14], arrays[15]
-    class_first, y_reach = arrays[17], arrays[19]
+    """Write the nodes of sight line ``s`` from and to which each layer can put stars into the bins: (layer, 2).
+
+    Extinction grows with the class of temperature and with the extinction node: the last of them is shifted farthest.
+    """
+    first_node, mu, A, y_reach = arrays[11], arrays[14], arrays[15], arrays[19]
     a, b = first_node[s], first_node[s + 1]
-    last = A.shape[1] - 1  # extinction nodes grow: the first is the clearest
-    for c in range(class_first.size - 1):
-        for k in range(class_first[c], class_first[c + 1]):
-            reach[k, 0] = first_at_least(mu[a:b], A[c, last, a:b], factor, y_reach[k, 0])
-            reach[k, 1] = max(first_at_least(mu[a:b], A[c, 0, a:b], factor, y_reach[k, 1]), reach[k, 0])
+    most, least = A[A.shape[0] - 1, A.shape[1] - 1, a:b], A[0, 0, a:b]
+    for k in range(reach.shape[0]):
+        reach[k, 0] = first_at_least(mu[a:b], most, factor, y_reach[k, 0])
+        reach[k, 1] = max(first_at_least(mu[a:b], least, factor, y_reach[k, 1]), reach[k, 0])
 
 
 @kernel

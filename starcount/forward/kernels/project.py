@@ -2,7 +2,8 @@
 
 Fields go in blocks: density, scatter and matrix product of a block stay in cache. Kernels are serial, release the GIL,
 allocate their own work space and hold no state, so they may be called from any thread. The trailing ``arrays`` are
-``Projection.arrays``, described there.
+``Projection.arrays``, described there. Counts in magnitude only have one slab of colour excess, and are multiplied
+whole.
 """
 
 import numpy as np
@@ -10,24 +11,35 @@ import numpy as np
 from starcount.compilation import kernel
 from starcount.forward.kernels.density import layer_numbers, line_stars
 from starcount.forward.kernels.grid import scatter
+from starcount.forward.kernels.products import multiply_spans
+from starcount.forward.kernels.slabs import block_of, clear_spans, scatter_in_colour
 from starcount.vector_math import exp
 
 BLOCK = 32  # fields; 16 to 64 measured alike, more leaves the second-level cache
+BLOCK_IN_COLOUR = 96  # the matrix is too large for any cache: more fields meet it each time it is read
 
 
 @kernel
-def fill_grid(f, v, theta, ln_scale, factor, arrays, space, grid):
-    """Put the stars of field ``f`` on the grid (y, layer): the sum over its sight lines."""
+def fill_grid(f, v, theta, ln_scale, factor, arrays, space, spans, grid):
+    """Add the stars of field ``f``, the sum over its sight lines, to its flat grid, which is zero outside ``spans``."""
     first_line, first_node = arrays[10], arrays[11]
     mu, A, node_weight, class_first, grid_start = arrays[14], arrays[15], arrays[16], arrays[17], arrays[18]
-    grid[:] = 0.0
+    layer_of, E = arrays[20], arrays[21]
+    n_y, in_colour = int(grid_start[2]), grid_start[5] > 1.0
     for s in range(first_line[f], first_line[f + 1]):
         a, b = first_node[s], first_node[s + 1]
         found = line_stars(s, v, theta, ln_scale, factor, arrays, space)
         for c in range(class_first.size - 1):
-            first, last = class_first[c], class_first[c + 1]
+            mine = layer_of[class_first[c] : class_first[c + 1]]
             for e in range(node_weight.size):
-                scatter(found, mu[a:b], A[c, e, a:b], factor, node_weight[e], grid_start, first, last, grid)
+                if in_colour:
+                    scatter_in_colour(
+                        found, mine, c, class_first, mu[a:b], A[c, e, a:b], E[c, e, a:b], factor, node_weight[e],
+                        grid_start, spans, grid,
+                    )  # fmt: skip
+                else:
+                    block = block_of(grid, 0, c, class_first, n_y)
+                    scatter(found, mine, mu[a:b], A[c, e, a:b], factor, node_weight[e], grid_start, block)
 
 
 @kernel
@@ -39,33 +51,49 @@ def work_space(arrays):
 
 
 @kernel
+def empty_grid(n_field, arrays):
+    """Flat grids of zeros (field, row), and spans (slab, class, 2) that hold nothing."""
+    class_first, n_y, n_slab = arrays[17], int(arrays[18][2]), int(arrays[18][5])
+    spans = np.zeros((n_slab, class_first.size - 1, 2), np.int64)
+    spans[:, :, 0] = n_y
+    return np.zeros((n_field, n_slab * class_first[-1] * n_y)), spans
+
+
+@kernel
 def stars_on_grid(v, ln_dust, *arrays):
-    """Return the stars (field, y x layer) before the luminosity matrix, all at once: for checks, not for speed."""
-    n_field, n_y, n_layer = arrays[10].size - 1, int(arrays[18][2]), arrays[0].shape[0]
+    """Return the stars (field, row) before the luminosity matrix, all at once: for checks, not for speed."""
+    n_field = arrays[10].size - 1
     theta, ln_scale = layer_numbers(v, arrays)
     space = work_space(arrays)
-    grid = np.empty((n_field, n_y, n_layer))
+    grid, spans = empty_grid(n_field, arrays)
     for f in range(n_field):
-        fill_grid(f, v, theta, ln_scale, exp(ln_dust[f]), arrays, space, grid[f])
-    return grid.reshape(n_field, n_y * n_layer)
+        fill_grid(f, v, theta, ln_scale, exp(ln_dust[f]), arrays, space, spans, grid[f])
+    return grid
 
 
 @kernel
 def project(v, W, ln_dust, *arrays):
     """Return expected counts (field, bin).
 
-    ``v`` is ``Galaxy.vector``, ``W`` the luminosity matrix (y x layer, bin), ``ln_dust`` (field,) the logarithm of the
-    factor on each field's extinction.
+    ``v`` is ``Galaxy.vector``, ``W`` the luminosity matrix (row, bin), ``ln_dust`` (field,) the logarithm of the factor
+    on each field's extinction.
     """
-    n_field, n_y, n_layer = arrays[10].size - 1, int(arrays[18][2]), arrays[0].shape[0]
+    n_field, class_first, n_y, n_slab = arrays[10].size - 1, arrays[17], int(arrays[18][2]), int(arrays[18][5])
     theta, ln_scale = layer_numbers(v, arrays)
     space = work_space(arrays)
-    grid = np.empty((BLOCK, n_y, n_layer))
-    counts = np.empty((n_field, W.shape[1]))
-    for start in range(0, n_field, BLOCK):
-        size = min(BLOCK, n_field - start)
+    block = BLOCK if n_slab == 1 else BLOCK_IN_COLOUR
+    grid, spans = empty_grid(min(block, n_field), arrays)
+    counts = np.zeros((n_field, W.shape[1]))
+    for start in range(0, n_field, block):
+        size = min(block, n_field - start)
+        if n_slab == 1:
+            grid[:] = 0.0
         for i in range(size):
             f = start + i
-            fill_grid(f, v, theta, ln_scale, exp(ln_dust[f]), arrays, space, grid[i])
-        np.dot(grid[:size].reshape(size, n_y * n_layer), W, counts[start : start + size])
+            fill_grid(f, v, theta, ln_scale, exp(ln_dust[f]), arrays, space, spans, grid[i])
+        if n_slab == 1:
+            np.dot(grid[:size], W, counts[start : start + size])
+        else:
+            multiply_spans(grid, size, W, spans, arrays[22], class_first, n_y, counts[start : start + size])
+            clear_spans(grid, size, spans, class_first, n_y)
     return counts

@@ -10,7 +10,9 @@ from starcount.compilation import kernel
 from starcount.forward.kernels.call import call_law
 from starcount.forward.kernels.density import layer_numbers, line_stars
 from starcount.forward.kernels.grid import gather
-from starcount.forward.kernels.project import BLOCK, fill_grid, work_space
+from starcount.forward.kernels.products import matrix_from_spans, multiply_spans_back
+from starcount.forward.kernels.project import BLOCK, BLOCK_IN_COLOUR, empty_grid, fill_grid, work_space
+from starcount.forward.kernels.slabs import block_of, clear_spans, gather_in_colour
 from starcount.vector_math import exp
 
 
@@ -70,22 +72,37 @@ def reverse_line(s, v, theta, arrays, space, n, value, moved, slopes, g_theta, g
 
 
 @kernel
-def reverse_field(f, v, theta, ln_scale, factor, arrays, space, more, cotangent, g_theta, g_scale):
-    """Bring the cotangent (y, layer) of a field back; return its gradients by the Sun's height and by ln dust."""
-    first_line, first_node = arrays[10], arrays[11]
+def gather_line(a, b, factor, arrays, cotangent, got, bent):
+    """Bring the cotangent of the grid to the nodes ``a`` to ``b``: by the stars, and by the extinction's factor."""
     mu, A, node_weight, class_first, grid_start = arrays[14], arrays[15], arrays[16], arrays[17], arrays[18]
+    layer_of, E = arrays[20], arrays[21]
+    n_y, in_colour = int(grid_start[2]), grid_start[5] > 1.0
+    got[:] = 0.0
+    bent[:] = 0.0
+    for c in range(class_first.size - 1):
+        mine = layer_of[class_first[c] : class_first[c + 1]]
+        for e in range(node_weight.size):
+            if in_colour:
+                gather_in_colour(
+                    cotangent, mine, c, class_first, mu[a:b], A[c, e, a:b], E[c, e, a:b], factor, node_weight[e],
+                    grid_start, got, bent,
+                )  # fmt: skip
+            else:
+                block = block_of(cotangent, 0, c, class_first, n_y)
+                gather(block, mine, mu[a:b], A[c, e, a:b], factor, node_weight[e], grid_start, got, bent)
+
+
+@kernel
+def reverse_field(f, v, theta, ln_scale, factor, arrays, space, more, cotangent, g_theta, g_scale):
+    """Bring the cotangent (row,) of a field's grid back; return its gradients by the Sun's height and by ln dust."""
+    first_line, first_node = arrays[10], arrays[11]
     value, by_factor, moved, slopes = more
     by_height, by_dust = 0.0, 0.0
     for s in range(first_line[f], first_line[f + 1]):
         a, b = first_node[s], first_node[s + 1]
         found = line_stars(s, v, theta, ln_scale, factor, arrays, space)
         got, bent = value[: b - a], by_factor[: b - a]
-        got[:] = 0.0
-        bent[:] = 0.0
-        for c in range(class_first.size - 1):
-            first, last = class_first[c], class_first[c + 1]
-            for e in range(node_weight.size):
-                gather(cotangent, mu[a:b], A[c, e, a:b], factor, node_weight[e], grid_start, first, last, got, bent)
+        gather_line(a, b, factor, arrays, cotangent, got, bent)
         by_height += reverse_line(s, v, theta, arrays, space, b - a, got, moved, slopes, g_theta, g_scale)
         by_dust += dot(found.ravel(), bent.ravel())
     return by_height, factor * by_dust
@@ -117,33 +134,53 @@ def collect(v, theta, g_theta, g_scale, by_height, arrays):
 
 
 @kernel
+def more_space(longest, n_layer, n_most):
+    """Work space of the way back: two (node, layer), one (3, node), and the slopes of a law at every node."""
+    return (
+        np.empty((longest, n_layer)), np.empty((longest, n_layer)), np.empty((3, longest)),
+        np.empty((n_most + 3) * longest),
+    )  # fmt: skip
+
+
+@kernel
 def project_back(v, W, ln_dust, cotangent, want_W, *arrays):
     """Return the gradients by ``v``, ``W`` and ``ln_dust`` of sum(cotangent * project(...)).
 
     ``cotangent`` (field, bin). The gradient by ``W`` costs one more matrix product; unless ``want_W`` it is zero.
     """
-    n_field, n_y, n_layer = arrays[10].size - 1, int(arrays[18][2]), arrays[0].shape[0]
+    n_field, class_first, n_y, n_slab = arrays[10].size - 1, arrays[17], int(arrays[18][2]), int(arrays[18][5])
     theta, ln_scale = layer_numbers(v, arrays)
     space = work_space(arrays)
-    longest = space[0].shape[1]
-    more = (np.empty((longest, n_layer)), np.empty((longest, n_layer)), np.empty((3, longest)),
-            np.empty((arrays[0].shape[1] + 3) * longest))  # fmt: skip
-    g_theta, g_scale, g_W, g_dust = np.zeros(theta.shape), np.zeros(n_layer), np.zeros(W.shape), np.zeros(n_field)
-    grid, back = np.empty((BLOCK, n_y, n_layer)), np.empty((BLOCK, n_y, n_layer))
-    W_transposed, by_height = np.ascontiguousarray(W.T), 0.0
-    for start in range(0, n_field, BLOCK):
-        size = min(BLOCK, n_field - start)
+    more = more_space(space[0].shape[1], arrays[0].shape[0], arrays[0].shape[1])
+    g_theta, g_scale, g_W = np.zeros(theta.shape), np.zeros(ln_scale.size), np.zeros(W.shape)
+    g_dust, by_height = np.zeros(n_field), 0.0
+    block = BLOCK if n_slab == 1 else BLOCK_IN_COLOUR
+    grid, spans = empty_grid(min(block, n_field), arrays)
+    back = np.zeros(grid.shape)
+    W_transposed = np.ascontiguousarray(W.T) if n_slab == 1 else np.zeros((0, 0))
+    for start in range(0, n_field, block):
+        size = min(block, n_field - start)
         wanted = cotangent[start : start + size]
-        np.dot(wanted, W_transposed, back[:size].reshape(size, n_y * n_layer))
+        if want_W or n_slab > 1:
+            if n_slab == 1:
+                grid[:] = 0.0
+            for i in range(size):
+                f = start + i
+                fill_grid(f, v, theta, ln_scale, exp(ln_dust[f]), arrays, space, spans, grid[i])
+        if n_slab == 1:
+            np.dot(wanted, W_transposed, back[:size])
+        else:
+            multiply_spans_back(wanted, W, spans, arrays[22], class_first, n_y, back)
         for i in range(size):
             f = start + i
-            factor = exp(ln_dust[f])
-            if want_W:
-                fill_grid(f, v, theta, ln_scale, factor, arrays, space, grid[i])
             height, g_dust[f] = reverse_field(
-                f, v, theta, ln_scale, factor, arrays, space, more, back[i], g_theta, g_scale
+                f, v, theta, ln_scale, exp(ln_dust[f]), arrays, space, more, back[i], g_theta, g_scale
             )
             by_height += height
-        if want_W:
-            g_W += np.dot(grid[:size].reshape(size, n_y * n_layer).T, wanted)
+        if want_W and n_slab == 1:
+            g_W += np.dot(grid[:size].T, wanted)
+        if n_slab > 1:
+            if want_W:
+                matrix_from_spans(grid, size, wanted, spans, arrays[22], class_first, n_y, g_W)
+            clear_spans(grid, size, spans, class_first, n_y)
     return collect(v, theta, g_theta, g_scale, by_height, arrays), g_W, g_dust

@@ -1,0 +1,120 @@
+"""Building a locus: tracks of several metallicities, weighted by a population's distribution of [Fe/H]."""
+
+from functools import cache
+
+import numpy as np
+from scipy.special import ndtri
+
+from starcount.constants import EVOLVED_CLASSES
+from starcount.errors import UnknownName
+from starcount.stars import tracks
+from starcount.stars.bands import BANDS
+from starcount.stars.cache import kept
+from starcount.stars.cells import CELL_MAG, CLASSES, M_MIDDLE_MAG
+from starcount.stars.evolved import require_reference
+from starcount.stars.locus import Locus, scatter_mag
+
+METALLICITY = {
+    "census": (0.0, 0.2),
+    "thick disc": (-0.6, 0.3),
+    "halo": (-1.5, 0.5),
+    "bulge": (0.0, 0.4),
+}
+"""Mean and spread of [Fe/H], dex: conventions, from memory. The spread is taken as Gaussian."""
+
+NODES = 7
+
+_COLOURS_HOLD_MAG = 0.5
+"""Stars this much brighter or fainter than a track, for their age, have its colours."""
+
+_NEAR_DEX = 0.3
+"""A star counts as inside when a track inside is this near: colours then differ by less than their scatter. It is the
+greatest distance from the nearer of two tracks half a dex apart, and a little."""
+
+_LEAST_SHARE = 1e-4
+"""Kinds of stars rarer than this in their cell are left out."""
+
+
+@cache
+def named_locus(name: str, reference: str) -> Locus:
+    """Return the locus of one of our populations, or of the census, in a reference band."""
+    if name not in METALLICITY:
+        raise UnknownName("population with a locus", name, tuple(METALLICITY))
+    return locus_of(*METALLICITY[name], reference)
+
+
+@cache
+def locus_of(mean_dex: float, spread_dex: float, reference: str) -> Locus:
+    """Return the locus of a population whose [Fe/H] is Gaussian.
+
+    Seven metallicities of equal weight with that mean and spread, clipped to the tracks'; between two tracks stars are
+    interpolated linearly. Of evolved stars at one magnitude the metallicities hold what their tracks put there: at the
+    brightest magnitudes only those whose branch reaches so far. Cells that no track reaches take the nearest that one
+    does, with its colours; further than half a magnitude away they are not inside.
+    """
+    require_reference(reference)
+    inputs = ("locus", mean_dex, spread_dex, reference)
+    return Locus.from_arrays(kept(inputs, lambda: _build(mean_dex, spread_dex, reference).arrays()))
+
+
+def _build(mean_dex: float, spread_dex: float, reference: str) -> Locus:
+    z = ndtri((np.arange(NODES) + 0.5) / NODES)
+    feh = mean_dex + spread_dex * z / np.sqrt((z**2).mean())
+    pieces = [_points("white dwarf", [tracks.sequence("white_dwarfs", None, reference)], reference)]
+    dwarfs = [_between("dwarfs", f, lambda at: tracks.sequence("dwarfs", at, reference)) for f in feh]
+    pieces.append(_points("dwarf", dwarfs, reference))
+    for name in EVOLVED_CLASSES:
+        found = [_between("evolved", f, lambda at, name=name: tracks.branch(name, at, reference)) for f in feh]
+        pieces.append(_points(name, found, reference))
+    pieces = [piece for piece in pieces if piece is not None]
+    return Locus.from_arrays({key: np.concatenate([piece[key] for piece in pieces]) for key in pieces[0]})
+
+
+def _between(name: str, feh: float, track) -> tracks.Cells:
+    """Return the cells at a metallicity, linear between the two tracks around it (in the stars each holds)."""
+    grid = tracks.metallicities(name)
+    feh = float(np.clip(feh, grid[0], grid[-1]))
+    hi = max(int(np.searchsorted(grid, feh)), 1)
+    t = (feh - grid[hi - 1]) / (grid[hi] - grid[hi - 1])
+    pair = [(1 - t, track(float(grid[hi - 1]))), (t, track(float(grid[hi])))]
+    stars = sum(weight * cells.stars for weight, cells in pair)
+    look, inside = np.zeros_like(pair[0][1].look), np.zeros_like(pair[0][1].inside)
+    for weight, cells in pair:
+        part = np.divide(weight * cells.stars, stars, out=np.zeros_like(stars), where=stars > 0)
+        look += np.where(part > 0, part * cells.look, 0.0)
+        inside |= cells.inside & (part > 0) & (abs(feh - cells.feh) <= _NEAR_DEX)
+    return tracks.Cells(feh, stars, look, inside)
+
+
+def _points(star_class: str, nodes: list[tracks.Cells], reference: str) -> dict[str, np.ndarray] | None:
+    """Return the points of a class as named arrays; nothing where no track has such stars."""
+    stars = np.array([cells.stars for cells in nodes])
+    total = stars.sum(axis=0)
+    if not total.any():
+        return None
+    reached = np.flatnonzero(total > 1e-9 * total.max())
+    nearest = reached[np.abs(M_MIDDLE_MAG[reached] - M_MIDDLE_MAG[:, None]).argmin(axis=1)]
+    share = (stars / np.where(total > 0, total, 1.0))[:, nearest]  # (node, cell)
+    share[share < _LEAST_SHARE] = 0.0
+    share /= share.sum(axis=0)
+    node, cell = np.nonzero(share)
+    look = np.array([cells.look for cells in nodes])[node, :, :, nearest[cell]]  # (point, quantity, kind)
+    inside = np.array([cells.inside for cells in nodes])[node, :, :, nearest[cell]]
+    inside &= (np.abs(nearest[cell] - cell) * CELL_MAG <= _COLOURS_HOLD_MAG)[:, None, None]
+    return _named(star_class, cell, share[node, cell], look, inside)
+
+
+def _named(star_class: str, cell, share, look: np.ndarray, inside: np.ndarray) -> dict[str, np.ndarray]:
+    n_kind = look.shape[2]
+    cell = np.repeat(cell, n_kind)
+    Teff, *differences = np.moveaxis(look, 1, 0).reshape(look.shape[1], -1)
+    points = {
+        "class_index": np.full(cell.size, CLASSES.index(star_class)),
+        "cell": cell,
+        "share": np.repeat(share, n_kind) / n_kind,
+        "Teff_K": np.exp(Teff),
+        "scatter_mag": scatter_mag(star_class, M_MIDDLE_MAG[cell]),
+    }
+    points |= {f"M_mag/{b}": M_MIDDLE_MAG[cell] + d for b, d in zip(BANDS, differences, strict=True)}
+    ranges = np.moveaxis(inside, 1, 0).reshape(len(tracks.ranges()), -1)
+    return points | {f"inside/{name}": s for name, s in zip(tracks.ranges(), ranges, strict=True)}
