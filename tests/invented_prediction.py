@@ -90,7 +90,9 @@ def survey(number=24, names=None, counts="drawn", used=None, seed=3, invented=Tr
 def model(of_survey, outside=None):
     """The fake model of a survey; of each group a share of the stars may be ``outside`` verified ranges."""
     groups = tuple(group_model(group, outside) for group in of_survey.groups)
-    return SimpleNamespace(survey=of_survey, galaxy=SimpleNamespace(values=dict(TRUTH)), groups=groups)
+    parameters = {name: SimpleNamespace(lower=0.0, upper=10.0) for name in TRUTH}
+    galaxy = SimpleNamespace(values=dict(TRUTH), parameters=parameters)
+    return SimpleNamespace(survey=of_survey, galaxy=galaxy, groups=groups, prepared=lambda: iter(groups))
 
 
 def posterior(floor=0.05, certified=True, seed=1, size=400, curve=0.0):

@@ -174,11 +174,13 @@ def test_blocks_and_threads_do_not_matter(default):
 def test_the_luminosity_matrix_and_its_transpose(seed):
     """<L f, g> = <f, L^T g> for factors f on the functions."""
     rng = np.random.default_rng(seed)
-    n_row, n_bin, n_piece = (int(n) for n in rng.integers(1, 6, 3))
-    owner, first = rng.integers(0, 3, n_row), rng.integers(0, 10 - n_piece + 1, (n_row, n_bin))
-    pieces, f, g = rng.normal(size=(n_row, n_bin, n_piece)), rng.normal(size=(3, 10)), rng.normal(size=(n_row, n_bin))
-    back = luminosity_back(g, f.shape, owner, first, pieces)
-    assert_allclose(np.vdot(luminosity(f, owner, first, pieces), g), np.vdot(f, back), rtol=1e-9, atol=1e-9)
+    n_row, n_block, n_piece, width = (int(n) for n in rng.integers(1, 6, 4))
+    owner, first = rng.integers(0, 3, n_row), rng.integers(0, 10 - n_piece + 1, n_block)
+    row, bin = rng.integers(0, n_row, n_block), width * rng.integers(0, 3, n_block)
+    arrays = (np.array([3 * width]), owner, row, bin, first, rng.normal(size=(n_block, n_piece, width)))
+    f, g = rng.normal(size=(3, 10)), rng.normal(size=(n_row, 3 * width))
+    back = luminosity_back(g, f.shape, *arrays)
+    assert_allclose(np.vdot(luminosity(f, *arrays), g), np.vdot(f, back), rtol=1e-9, atol=1e-9)
 
 
 def test_the_luminosity_matrix_against_its_plain_twin(default):

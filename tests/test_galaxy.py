@@ -200,6 +200,17 @@ def test_a_wrong_galaxy_names_everything_that_is_wrong(tmp_path):
         ("error = 0.65", "lower = 9.0, upper = 4.0, error = 0.65", "support from 9 to 4; expected lower < upper"),
         ('prior = "normal"', 'prior = "flat"', "'flat'; expected one of lognormal, normal"),
         ('amplitude = "remainder"', 'amplitude = "remander"', "'remander'; expected one of remainder, share"),
+        (
+            "ratios = { h_z_kpc = 0.5 }",
+            "ratios = { h_z_kpc = 50 }",
+            "component 'thin', layer 2.ratios.h_z_kpc: 50 times 0.3 is 15; expected a product from 0.01 to 5",
+        ),
+        ('population = "halo"', "population = 3", "component 'halo'.population: 3; expected a population's name"),
+        (
+            'population = "halo"',
+            'population = "mine/old.toml"',
+            "component 'halo'.population: 'mine/old.toml', no such file; expected a file, named from the folder",
+        ),
         ("h_z_ratio", "h_z_ratio", None),
     ],
 )
@@ -212,6 +223,32 @@ def test_wrong_entries_are_refused(tmp_path, old, new, message):
         return
     with pytest.raises(Problems, match=message.replace("(", r"\(")):
         read_galaxy(path)
+
+
+def test_populations_are_looked_for_beside_the_galaxy(tmp_path, monkeypatch):
+    """A file of a population is named from the Galaxy's own folder, wherever one works."""
+    text = (read_galaxy.__globals__["PUBLISHED"] / "default.toml").read_text()
+    (tmp_path / "mine" / "tables").mkdir(parents=True)
+    (tmp_path / "mine" / "tables" / "old.ecsv").touch()
+    path = tmp_path / "mine" / "galaxy.toml"
+    path.write_text(text.replace('population = "halo"', 'population = "tables/old.ecsv"'))
+    monkeypatch.chdir(tmp_path)
+    found = {c.name: c.population for c in read_galaxy("mine/galaxy.toml").components}
+    assert found == {"thin": "census", "thick": "thick disc", "halo": "mine/tables/old.ecsv", "bulge": "bulge"}
+
+
+def test_only_populations_that_are_known_pass_where_they_are_given(tmp_path):
+    """File, key, name, and the reason where one is left out on purpose; without a list of names any passes."""
+    path = tmp_path / "mine.toml"
+    text = (read_galaxy.__globals__["PUBLISHED"] / "default.toml").read_text()
+    path.write_text(text.replace('population = "bulge"', 'population = "comets"'))
+    assert read_galaxy(path).components[-1].population == "comets"
+    known, absent = ("census", "halo", "thick disc"), {"comets": "no stars"}
+    line = f"{path}: component 'bulge'.population: 'comets'"
+    for reasons, middle in ((None, ""), (absent, ", left out (no stars)")):
+        with pytest.raises(Problems) as caught:
+            read_galaxy(path, populations=known, absent=reasons)
+        assert str(caught.value).startswith(f"{line}{middle}; expected one of census, halo, thick disc, or the path")
 
 
 def test_unknown_names():

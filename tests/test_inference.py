@@ -43,7 +43,7 @@ def test_gradients_of_the_operations_are_those_of_differences(mode):
     group = toy_model(n_field=3, n_bin=3).groups[0]
     v, scale, dust = pt.dvector(), pt.dscalar(), pt.dvector()
     factors = pt.exp(scale * pt.arange(2 * KNOTS_MAG.size).reshape((2, -1)) / 20.0)
-    W = Luminosity(KERNELS)(factors, group.matrix.layer, *group.matrix.pieces)
+    W = Luminosity(KERNELS)(factors, *group.matrix.arrays(np.arange(2)))
     counts = ExpectedCounts(KERNELS, fixed_luminosity=False)(v, W, dust, *group.projection.arrays)
     weights = np.random.default_rng(0).normal(size=group.used.shape)
     cost = pt.sum(counts * weights)

@@ -219,7 +219,9 @@ def test_worst_bins_name_their_colour(in_colour, model, survey):
     coloured_survey, coloured = in_colour
     part = replace(coloured.groups[0], group=replace(coloured_survey.groups[0], name="coloured"))
     both = SimpleNamespace(
-        survey=replace(survey, groups=(*survey.groups, part.group)), galaxy=model.galaxy, groups=(*model.groups, part)
+        survey=replace(survey, groups=(*survey.groups, part.group)),
+        galaxy=model.galaxy,
+        prepared=lambda: iter((*model.groups, part)),
     )
     worst = predict_counts(both).worst_bins(400)
     named = np.asarray(worst["colour"]) == "BP-RP"
@@ -252,11 +254,39 @@ def test_stars_outside_verified_ranges_are_a_caution_from_one_per_cent_on(survey
     assert "group all: 3.2 % of the expected stars" in cautions[0]
 
 
-def test_progress_names_every_group(model):
-    """Preparing comes first, then a share is told for each group, none of them 1 before the end."""
+def test_progress_is_told_before_each_group_is_laid_out(survey, model):
+    """Of two groups the second is laid out when the first is predicted, and its share is that of the groups done."""
     told = []
-    predict_counts(model, progress=lambda what, share: told.append((what, share)))
-    assert told == [("preparing the sight lines", 0.0), ("predicting group all", 0.5)]
+
+    def prepared():
+        for name in ("first", "second"):
+            told.append(name)
+            yield model.groups[0]
+
+    two = SimpleNamespace(
+        survey=replace(survey, groups=tuple(replace(survey.groups[0], name=name) for name in ("a", "b"))),
+        galaxy=model.galaxy,
+        prepared=prepared,
+    )
+    predict_counts(two, progress=lambda what, share: told.append((what, share)))
+    lines, doing = "laying out the sight lines of", "predicting"
+    expected = [(f"{lines} a", 0.0), "first", (f"{doing} a", 0.4), (f"{lines} b", 0.5), "second", (f"{doing} b", 0.9)]
+    assert told == expected
+
+
+@pytest.mark.parametrize(
+    ("values", "message"),
+    [
+        ({"thin.amplitud": 1.0}, "no parameter called 'thin.amplitud'; known: halo.amplitude_pc3, thin.amplitude"),
+        ({"thin.amplitude": -1.0}, "value of thin.amplitude: -1.0; expected a number from 0 to 10"),
+        ({"thin.amplitude": np.nan}, "value of thin.amplitude: nan"),
+        ({"thin.amplitude": "much"}, "value of thin.amplitude: 'much'"),
+    ],
+)
+def test_values_that_no_parameter_takes_are_refused(model, values, message):
+    """A misspelt name would otherwise change nothing, silently."""
+    with pytest.raises(InputError, match=message):
+        predict_counts(model, values=values)
 
 
 def test_predicted_intervals_cover_counts_drawn_from_the_model():

@@ -4,12 +4,14 @@ import json
 from pathlib import Path
 
 import numpy as np
+import own_files
 import pytest
 from astropy.table import QTable
 
 from starcount import steps
 from starcount.cli import main, screen
 from starcount.errors import InputError, UnknownName
+from starcount.galaxy.read import PUBLISHED
 from starcount.report import page
 from starcount.survey import Survey, circle_fields, make_group, read_survey, write_survey
 
@@ -98,6 +100,79 @@ def test_a_run_holds_all_that_its_page_needs(tmp_path):
     np.testing.assert_array_equal(again.prediction.groups["wide"].expected, done.prediction.groups["wide"].expected)
 
 
+@pytest.fixture
+def own_galaxy():
+    """A Galaxy whose halo and thick disc are of invented populations, one with its table in another folder."""
+    home = Path("mine")
+    (home / "tables").mkdir(parents=True)
+    settings = own_files.FUNCTION
+    made = own_files.write_own(home / "tables", settings, own_files.function_rows(), ending=".fits")
+    made.rename(home / "old.toml")
+    (home / "old.toml").write_text((home / "old.toml").read_text().replace('"own.fits"', '"tables/own.fits"'))
+    own_files.function_rows().write(home / "thick.ecsv", format="ascii.ecsv")
+    text = (PUBLISHED / "default.toml").read_text().replace('population = "halo"', 'population = "old.toml"')
+    (home / "galaxy.toml").write_text(text.replace('population = "thick disc"', 'population = "thick.ecsv"'))
+    return home / "galaxy.toml"
+
+
+def test_a_run_keeps_the_populations_of_its_galaxy(own_galaxy):
+    """The page is drawn from copies when the user's files are gone; run.json has a digest of each."""
+    done = steps.predict(DEMO, galaxy=own_galaxy, run="own")
+    names = [Path(entry["path"]).name for entry in done.record["provenance"]["inputs"]]
+    assert {"galaxy.toml", "old.toml", "own.fits", "thick.ecsv"} <= set(names)
+    for path in (own_galaxy, *own_galaxy.parent.glob("*.toml"), *own_galaxy.parent.glob("tables/*")):
+        path.unlink(missing_ok=True)
+    again = steps.report("own")
+    np.testing.assert_array_equal(again.prediction.groups["wide"].expected, done.prediction.groups["wide"].expected)
+
+
+def test_a_galaxy_without_files_is_kept_byte_by_byte():
+    """Comments and all."""
+    done = steps.predict(DEMO, galaxy="juric-2008")
+    assert (done.folder / "inputs" / "galaxy.toml").read_bytes() == (PUBLISHED / "juric-2008.toml").read_bytes()
+
+
+def test_a_population_is_found_in_a_galaxy_by_its_file(own_galaxy):
+    """However its path is written, and with the Galaxy's files among the inputs."""
+    run = steps.population(own_galaxy.parent / "tables" / ".." / "old.toml", galaxy=own_galaxy, band="V")
+    assert [part["name"] for part in run.record["result"]["components"]] == ["halo"]
+    names = [Path(entry["path"]).name for entry in run.record["provenance"]["inputs"]]
+    assert {"galaxy.toml", "old.toml", "own.fits", "thick.ecsv"} <= set(names)
+
+
+@pytest.mark.parametrize(
+    ("given", "said"),
+    [
+        ("comets", "'comets'; expected one of bulge, census, halo, thick disc, or the path of a file"),
+        ("RR Lyrae", "'RR Lyrae', left out (their share"),
+        ("gone.toml", "'gone.toml', no such file"),
+    ],
+)
+def test_an_unknown_population_names_file_and_key(given, said, capsys):
+    """Wherever a Galaxy is read: a prediction, a population."""
+    text = (PUBLISHED / "default.toml").read_text()
+    Path("g.toml").write_text(text.replace('population = "halo"', f'population = "{given}"'))
+    for arguments in (["predict", str(DEMO)], ["population", "census"]):
+        assert main([*arguments, "--galaxy", "g.toml"]) == 2
+        assert f"g.toml: component 'halo'.population: {said}" in capsys.readouterr().err
+
+
+def test_a_wrong_free_name_is_found_before_anything_is_put_together(monkeypatch, capsys):
+    """Before the survey is read, and with the name that may be meant."""
+    monkeypatch.setattr(steps.inputs, "read_survey", None)
+    assert main(["fit", str(DEMO), "--free", "thin.h_z_kpc,thin.h_q_kpc"]) == 2
+    said = capsys.readouterr().err
+    assert said.startswith("starcount: free parameter 'thin.h_q_kpc': not in Galaxy 'default'; expected 'thin.h_")
+
+
+def test_bands_left_out_are_refused_with_the_reason(coloured, capsys):
+    """In every step that reads a survey."""
+    path = coloured / "survey.toml"
+    path.write_text(path.read_text().replace('"BP"', '"U"'))
+    assert main(["check", str(coloured)]) == 2
+    assert "colour: 'U', left out (the loci hold U only on the way" in capsys.readouterr().err
+
+
 def test_reporting_twice_leaves_one_page():
     """A page is replaced whole, and the tables of the run stay as they were."""
     done = steps.predict(DEMO, run="twice")
@@ -106,6 +181,14 @@ def test_reporting_twice_leaves_one_page():
     steps.report("twice")
     assert (done.folder / "fields.ecsv").read_bytes() == before
     assert sorted(path.name for path in Path("outputs").iterdir()) == ["twice"]
+
+
+def test_count_shows_the_groups_with_their_colours(coloured, capsys):
+    """After counting, the table of ``check`` with the new numbers of stars."""
+    Path("stars.csv").write_text("l,b,Gmag,BPmag,RPmag\n10.0,20.0,13.0,13.5,12.9\n10.0,20.0,13.0,14.5,12.9\n")
+    assert main(["count", str(coloured), "stars.csv", "--out", "counted"]) == 0
+    lines = capsys.readouterr().out.splitlines()
+    assert any(line.startswith("one") and "BP-RP, 2 from all bluer" in line and line.endswith(" 2") for line in lines)
 
 
 def test_count_writes_a_survey_that_can_be_fitted():

@@ -106,17 +106,18 @@ class ToyGroup:
 
     @property
     def matrix(self):
-        """The layer of each row of the matrix, and the matrix of every knot."""
+        """What ``luminosity`` takes after the factors."""
         n = self.first_bin.shape[0]
         pieces = [
             matrix(self.lf * hat(MIDDLE)[:, k], self.first_bin, self.used.shape[1]) for k in range(KNOTS_MAG.size)
         ]
-        return SimpleNamespace(layer=np.tile([0, 1], n), pieces=(np.ascontiguousarray(np.stack(pieces, axis=-1)),))
+        layer, pieces = np.tile([0, 1], n), np.ascontiguousarray(np.stack(pieces, axis=-1))
+        return SimpleNamespace(arrays=lambda owner: (owner[layer], pieces))
 
     def luminosity_matrix(self, factors=None):
         """W (row, bin)."""
         factors = np.ones((2, KNOTS_MAG.size)) if factors is None else factors
-        return luminosity(factors, self.matrix.layer, *self.matrix.pieces)
+        return luminosity(factors, *self.matrix.arrays(np.arange(2)))
 
     def expected(self, values=None, *, factors=None, parts=False):
         """Counts expected (field, bin), or by component."""

@@ -45,6 +45,9 @@ def _lines(record: dict) -> list[str]:
     return [
         *screen.columns(rows),
         *empty,
+        "",
+        *screen.group_table(found["groups"]),
+        "",
         f"columns used: {used}",
         f"written: {record['folder']}",
         f"next: starcount fit {record['folder']}",

@@ -72,6 +72,35 @@ def columns(rows: Sequence[Sequence[str]]) -> list[str]:
     return ["  ".join(cell.ljust(w) for cell, w in zip(row, widths, strict=True)).rstrip() for row in rows]
 
 
+def group_table(groups: Sequence[dict]) -> list[str]:
+    """What the groups of a survey hold, a line each."""
+    head = ["group", "band", "fields", "area [deg2]", "bins", "from", "to [mag]", "colour", "stars"]
+    rows = [
+        [
+            group["name"],
+            group["band"],
+            str(group["fields"]),
+            f"{group['area_deg2']:.2f}",
+            str(group["bins"]),
+            f"{group['m_lo_mag']:g}",
+            f"{group['m_hi_mag']:g}",
+            _colour_bins(group["colour"]),
+            "not counted" if group["stars"] is None else str(group["stars"]),
+        ]
+        for group in groups
+    ]
+    return columns([head, *rows])
+
+
+def _colour_bins(colour: dict | None) -> str:
+    """Such as ``BP-RP, 12 from 0.4 to all redder``."""
+    if colour is None:
+        return "-"
+    low, high = colour["c_lo_mag"], colour["c_hi_mag"]
+    ends = "all bluer" if low is None else f"{low:g}", "all redder" if high is None else f"{high:g}"
+    return f"{'-'.join(colour['bands'])}, {colour['bins']} from {' to '.join(ends)}"
+
+
 @contextmanager
 def progress() -> Iterator[Progress]:
     """A function to tell progress to: a bar with an estimate on a terminal, plain lines otherwise."""

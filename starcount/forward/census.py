@@ -39,6 +39,7 @@ def make_census_model(galaxy: Galaxy, reference: str) -> GroupModel:
         matrix=LuminosityMatrix(
             n_slab=1,
             layer=np.tile(np.arange(n_layer), _Y_MAG.size),
+            width=1,
             table_of=tables.by_class_at_knot,
             matrix_of=lambda table, slab: _rows_of(census, table),
         ),

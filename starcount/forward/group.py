@@ -139,6 +139,7 @@ def _matrix(tables: StarTables, rows: Rows, response: Response, ranges: np.ndarr
     return LuminosityMatrix(
         n_slab=n_slab,
         layer=np.concatenate([rows.flat(layer, kept(slab)) for slab in range(n_slab)]),
+        width=response.by_colour.shape[3],
         table_of=lambda knot: rows.take(tables.at_knot(knot)),
         matrix_of=matrix_of,
     )

@@ -1,5 +1,6 @@
 """A survey and a Galaxy, ready to predict."""
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -30,9 +31,18 @@ class ForwardModel:
     @cached_property
     def groups(self) -> tuple[GroupModel, ...]:
         """The survey's groups, in its order."""
-        return tuple(
-            make_group_model(group, self.galaxy, self.accuracy, self.dust_range) for group in self.survey.groups
-        )
+        return tuple(self.prepared())
+
+    def prepared(self) -> Iterator[GroupModel]:
+        """The survey's groups one by one, each laid out when it is first asked for, which takes most of the time."""
+        for group in self.survey.groups:
+            if group.name not in self._laid_out:
+                self._laid_out[group.name] = make_group_model(group, self.galaxy, self.accuracy, self.dust_range)
+            yield self._laid_out[group.name]
+
+    @cached_property
+    def _laid_out(self) -> dict[str, GroupModel]:
+        return {}
 
     @cached_property
     def census(self) -> GroupModel | None:

@@ -5,6 +5,7 @@ Everything wrong with a file is reported at once, with its key, the value given 
 
 import math
 import tomllib
+from collections.abc import Collection, Mapping
 from difflib import get_close_matches
 from importlib import resources
 from pathlib import Path
@@ -17,6 +18,7 @@ from starcount.galaxy.law import Law, LawParameter
 from starcount.galaxy.laws import LAWS
 
 PUBLISHED = resources.files("starcount.galaxy") / "published"
+POPULATION_FILES = (".toml", ".ecsv")
 _TOP = {"format", "name", "description", "sun", "census", "component"}
 _COMPONENT = {"name", "meaning", "law", "population", "amplitude", "parameters", "layer"}
 _AMPLITUDE = {
@@ -33,9 +35,20 @@ def published_names() -> tuple[str, ...]:
     return tuple(sorted(entry.name.removesuffix(".toml") for entry in PUBLISHED.iterdir() if entry.suffix == ".toml"))
 
 
-def read_galaxy(name_or_path: str | Path = "default") -> Galaxy:
+def is_file_name(population: str) -> bool:
+    """Whether a component's population is meant as a file of the user's own."""
+    return Path(population).suffix in POPULATION_FILES
+
+
+def read_galaxy(
+    name_or_path: str | Path = "default",
+    populations: Collection[str] | None = None,
+    absent: Mapping[str, str] | None = None,
+) -> Galaxy:
     """Return a Galaxy by its published name or from the user's TOML file.
 
+    Files of populations are named from the folder of the Galaxy's own file. With ``populations`` any other name of a
+    population is refused, with the reason if ``absent`` has one; without, names are taken as they are.
     Raises ``Problems`` with everything that is wrong with the file, ``UnknownName`` for a name that is neither.
     """
     if str(name_or_path) in published_names():
@@ -50,7 +63,7 @@ def read_galaxy(name_or_path: str | Path = "default") -> Galaxy:
         text = tomllib.loads(source.read_text(encoding="utf-8"))
     except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
         raise Problems(Problem(label, "", f"not TOML ({error})", "TOML text in UTF-8")) from None
-    return _Reader(label).galaxy(text)
+    return _Reader(label, Path(str(source)).parent, populations, absent or {}).galaxy(text)
 
 
 def _is_number(given) -> bool:
@@ -60,8 +73,9 @@ def _is_number(given) -> bool:
 class _Reader:
     """Collects the problems of one file while its parts are built."""
 
-    def __init__(self, file: str):
-        self.file = file
+    def __init__(self, file: str, folder: Path, populations: Collection[str] | None, absent: Mapping[str, str]):
+        self.file, self.folder = file, folder
+        self.populations, self.absent = populations, absent
         self.problems: list[Problem] = []
 
     def wrong(self, where: str, found: str, allowed: str) -> None:
@@ -123,15 +137,37 @@ class _Reader:
         self.known_keys(f"{where}.parameters", given, set(expected))
         for p in expected.values():
             parameters[f"{name}.{p.name}"] = self.parameter(f"{name}.{p.name}", given.get(p.name), p)
-        population = block.get("population")
-        if not isinstance(population, str):
-            self.wrong(f"{where}.population", repr(population), "'census', a population's name, or a path to a table")
+        population = self.population(f"{where}.population", block.get("population"))
         blocks = block.get("layer", [{"name": name}])
         if not isinstance(blocks, list):
             self.wrong(f"{where}.layer", repr(blocks), "[[component.layer]] blocks")
             blocks = []
         layers = tuple(self.layer(where, j, b, law) for j, b in enumerate(blocks))
-        return Component(name, str(block.get("meaning", "")), law, str(population), str(amplitude), layers)
+        for j, layer in enumerate(layers):
+            self.scaled(f"{where}, layer {j + 1}.ratios", name, layer, expected, parameters)
+        return Component(name, str(block.get("meaning", "")), law, population, str(amplitude), layers)
+
+    def population(self, where: str, given) -> str:
+        """The name of a population, or where its file is."""
+        if isinstance(given, str) and is_file_name(given):
+            path = self.folder / given
+            if not path.is_file():
+                self.wrong(where, f"{given!r}, no such file", f"a file, named from the folder {self.folder}")
+            return str(path)
+        known = self.populations
+        if not isinstance(given, str) or (known is not None and given not in known):
+            reason = f", left out ({self.absent[given]})" if isinstance(given, str) and given in self.absent else ""
+            names = f"one of {', '.join(sorted(known))}" if known is not None else "a population's name"
+            self.wrong(where, f"{given!r}{reason}", f"{names}, or the path of a file .toml or .ecsv")
+        return str(given)
+
+    def scaled(self, where: str, name: str, layer: Layer, law: Mapping[str, LawParameter], parameters: dict) -> None:
+        """Refuse ratios that take a parameter out of the law's own range."""
+        for key, ratio in layer.ratios.items():
+            value, p = parameters[f"{name}.{key}"].value, law[key]
+            if not p.lower <= ratio * value <= p.upper and math.isfinite(ratio * value):
+                allowed = f"a product from {p.lower:g} to {p.upper:g}, as the law has it"
+                self.wrong(f"{where}.{key}", f"{ratio:g} times {value:g} is {ratio * value:g}", allowed)
 
     def layer(self, where: str, j: int, block: dict, law: Law) -> Layer:
         where = f"{where}, layer {j + 1}"

@@ -163,8 +163,8 @@ def _expected(name: str, group, v, factors, owner: np.ndarray | None, kernels: K
     if factors is None:
         W = _data(f"{name}.luminosity", group.luminosity_matrix())
     else:
-        arrays = (owner[group.matrix.layer], *group.matrix.pieces)
-        W = Luminosity(kernels)(factors, *(_data(f"{name}.luminosity{i}", a) for i, a in enumerate(arrays)))
+        arrays = [_data(f"{name}.luminosity{i}", a) for i, a in enumerate(group.matrix.arrays(owner))]
+        W = Luminosity(kernels)(factors, *arrays)
     ln_dust = _data(f"{name}.ln_dust", np.zeros(group.counts.shape[0]))
     expected = ExpectedCounts(kernels, fixed_luminosity=factors is None)(v, W, ln_dust, *geometry)
     if len(group.extra):

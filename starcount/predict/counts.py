@@ -3,22 +3,27 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
+from numbers import Real
 from typing import TYPE_CHECKING
 
 import numpy as np
 from astropy.table import vstack
 
-from starcount.errors import InputError
+from starcount.errors import InputError, UnknownName
 from starcount.predict.prediction import GroupPrediction, Prediction
 from starcount.predict.tables import bin_table, field_table
 
 if TYPE_CHECKING:
     from starcount.forward import ForwardModel
+    from starcount.galaxy import Parameter
     from starcount.posterior import Posterior
     from starcount.survey import Survey
 
 SPLIT_DRAWS = 25
 """So many draws of a posterior are split into components."""
+
+_LAID_OUT = 0.8
+"""About so much of a group's time goes into its sight lines, where its model is new."""
 
 MOST_NUMBERS, FEWEST_DRAWS = 50_000_000, 50
 """Of a group with many bins fewer draws are predicted, down to this number: (draw, field, bin) must fit in memory."""
@@ -41,23 +46,37 @@ def predict_counts(
     with it; the tables say how many they were. ``seed`` starts the noise, field by field
     from the field's name, so that a field more or less changes no other. ``classes`` splits the components by star
     class too. ``progress(what, share)`` is told which group is at work.
+
+    Raises ``UnknownName`` for a value that the Galaxy has not, ``InputError`` for one outside its parameter's range.
     """
     if values is not None and posterior is not None:
         raise InputError("predict_counts: both values and a posterior given; expected one of them")
     if posterior is None:
-        values, source = {**model.galaxy.values, **(values or {})}, "values"
+        values, source = {**model.galaxy.values, **_checked(values or {}, model.galaxy.parameters)}, "values"
     else:
         source = "posterior" if posterior.certified else "uncertified draws"
-    # Most of the time goes into the sight lines, which are laid out when the groups are first asked for.
-    progress("preparing the sight lines", 0.0)
-    groups, number = {}, len(model.groups)
-    for i, part in enumerate(model.groups):
-        progress(f"predicting group {part.group.name}", 0.5 + 0.5 * i / number)
-        groups[part.group.name] = (
+    groups, number = {}, len(model.survey.groups)
+    prepared = model.prepared()
+    for i, group in enumerate(model.survey.groups):
+        progress(f"laying out the sight lines of {group.name}", i / number)
+        part = next(prepared)
+        progress(f"predicting {group.name}", (i + _LAID_OUT) / number)
+        groups[group.name] = (
             _from_values(part, values, classes) if posterior is None
             else _from_draws(part, posterior, draws, seed, classes)
         )  # fmt: skip
     return as_prediction(model.survey, groups, source)
+
+
+def _checked(values: Mapping[str, float], parameters: Mapping[str, Parameter]) -> Mapping[str, float]:
+    """Refuse values that name no parameter or that its law does not take."""
+    for name, value in values.items():
+        if name not in parameters:
+            raise UnknownName("parameter", name, tuple(parameters))
+        p = parameters[name]
+        if not (isinstance(value, Real) and p.lower <= value <= p.upper):
+            raise InputError(f"value of {name}: {value!r}; expected a number from {p.lower:g} to {p.upper:g}")
+    return values
 
 
 def as_prediction(survey: Survey, groups: Mapping[str, GroupPrediction], source: str) -> Prediction:

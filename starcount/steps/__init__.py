@@ -5,14 +5,14 @@ imported by the steps that need them: predicting does without PyMC, checking wit
 """
 
 from collections.abc import Callable, Mapping, Sequence
+from difflib import get_close_matches
 from pathlib import Path
 
-from starcount.errors import FailedChecks
-from starcount.galaxy import LAWS, published_names, read_galaxy
-from starcount.stars import BANDS
-from starcount.steps import folder, record
+from starcount.errors import FailedChecks, InputError
+from starcount.galaxy import LAWS, Galaxy, published_names
+from starcount.steps import folder, inputs, record
 from starcount.steps.record import Run
-from starcount.survey import Survey, overlapping_fields, read_survey, write_survey
+from starcount.survey import overlapping_fields, write_survey
 
 __all__ = ["Run", "check", "count", "demo", "fit", "laws", "population", "predict", "report"]
 
@@ -30,13 +30,9 @@ def stretch(progress: Progress, first: float, last: float) -> Progress:
     return lambda what, share: progress(what, first + (last - first) * share)
 
 
-def _read(survey: str | Path) -> Survey:
-    return read_survey(survey, bands=BANDS)
-
-
 def check(survey: str | Path) -> dict:
     """Read a survey with full checking; return what it holds. Raises ``Problems`` with everything that is wrong."""
-    found = _read(survey)
+    found = inputs.read_survey(survey)
     pairs = [[f"{group}/{field}" for group, field in pair] for pair in overlapping_fields(found)]
     return {**record.of_survey(found), "overlapping": pairs}
 
@@ -58,8 +54,8 @@ def count(
     """
     from starcount.catalogue import count_catalogue
 
-    empty = _read(survey)
-    final = folder.run_path(f"{record.short_name(survey)}-counts") if out is None else folder.new(Path(out))
+    empty = inputs.read_survey(survey)
+    final = folder.run_path(f"{inputs.short_name(survey)}-counts") if out is None else folder.new(Path(out))
     found = count_catalogue(
         catalogues,
         empty,
@@ -69,12 +65,18 @@ def count(
         progress=lambda done, total: progress("counting", done / total),
     )
     counted = record.with_counts(empty, found.counts)
-    result = {"rows": found.rows, "counted": found.counted, "dropped": found.dropped, "columns": found.columns}
+    result = {
+        "rows": found.rows,
+        "counted": found.counted,
+        "dropped": found.dropped,
+        "columns": found.columns,
+        "groups": [part for part in record.of_survey(counted)["groups"] if part["name"] in found.counts],
+    }
     options = {"columns": dict(columns or {}), "cuts": list(cuts), "group": group}
     with folder.replaced(final) as part:
         write_survey(counted, part)
-        inputs = [record.survey_folder(survey), *catalogues]
-        return Run(final, record.write(part, final, "count", options, inputs, result))
+        given = [inputs.survey_folder(survey), *catalogues]
+        return Run(final, record.write(part, final, "count", options, given, result))
 
 
 def predict(
@@ -89,7 +91,7 @@ def predict(
 
     ``classes`` splits the components by star class too.
     """
-    run = run or f"{record.short_name(survey)}-prediction"
+    run = run or f"{inputs.short_name(survey)}-prediction"
     return _predict(survey, galaxy or "default", {}, run, classes, progress)
 
 
@@ -99,12 +101,12 @@ def _predict(survey, galaxy, values: Mapping[str, float], run: str, classes: boo
     from starcount.report import write_tables
 
     final = folder.run_path(run)
-    model = ForwardModel(_read(survey), read_galaxy(galaxy))
+    model = ForwardModel(inputs.read_survey(survey), inputs.read_galaxy(galaxy))
     prediction = predict_counts(model, values=values, classes=classes, progress=progress)
     options = {"galaxy": str(galaxy), "values": dict(values), "classes": classes}
     with folder.replaced(final) as part:
-        inputs = record.keep_inputs(part, model.survey, survey, galaxy)
-        written = record.write(part, final, "predict", options, inputs, record.of_prediction(prediction))
+        given = inputs.keep_inputs(part, model.survey, survey, model.galaxy, galaxy)
+        written = record.write(part, final, "predict", options, given, record.of_prediction(prediction))
         write_tables(prediction, part, record.meta(written))
     return Run(final, written, prediction)
 
@@ -128,14 +130,18 @@ def fit(
 
     A fit that fails its checks is written too; then ``FailedChecks`` is raised, unless ``accept_failed``.
     """
+    galaxy = galaxy or "default"
+    final = folder.run_path(run or f"{inputs.short_name(survey)}-fit")
+    start = inputs.read_galaxy(galaxy)
+    _require_parameters(free or (), start)  # before PyMC, which takes seconds to import
+    counted = inputs.read_survey(survey)
+
     from starcount.forward import FIT_ACCURACY, ForwardModel, derived_quantities
     from starcount.inference import fit_galaxy
     from starcount.predict import predict_counts
     from starcount.report import write_tables
 
-    galaxy = galaxy or "default"
-    final = folder.run_path(run or f"{record.short_name(survey)}-fit")
-    model = ForwardModel(_read(survey), read_galaxy(galaxy), FIT_ACCURACY)
+    model = ForwardModel(counted, start, FIT_ACCURACY)
     settings = {"likelihood": likelihood, "draws": draws, "chains": chains, "seed": seed}
     switches = {"lf_curve": curve, "census": census, "derived": derived_quantities(model.galaxy)}
     posterior = fit_galaxy(model, free, **switches, **settings, progress=progress)
@@ -143,15 +149,24 @@ def fit(
     fitted = [name for name in posterior.names if name in model.galaxy.parameters]
     options = {"galaxy": str(galaxy), "free": fitted, "curve": curve, "census": census, **settings}
     with folder.replaced(final) as part:
-        inputs = record.keep_inputs(part, model.survey, survey, galaxy)
+        given = inputs.keep_inputs(part, model.survey, survey, model.galaxy, galaxy)
         result = {**record.of_prediction(prediction), **record.of_posterior(posterior)}
-        written = record.write(part, final, "fit", options, inputs, result)
+        written = record.write(part, final, "fit", options, given, result)
         posterior.save(part / record.POSTERIOR)
         write_tables(prediction, part, record.meta(written))
     done = Run(final, written, prediction, posterior)
     if not posterior.certified and not accept_failed:
         raise FailedChecks(f"{final}: FAILED CHECKS\n{posterior.verdict}")
     return done
+
+
+def _require_parameters(names: Sequence[str], galaxy: Galaxy) -> None:
+    for name in names:
+        if name not in galaxy.parameters:
+            near = get_close_matches(name, galaxy.parameters, 1)
+            hint = f"{near[0]!r}, or another" if near else "one"
+            known = ", ".join(sorted(galaxy.parameters))
+            raise InputError(f"free parameter {name!r}: not in Galaxy {galaxy.name!r}; expected {hint} of {known}")
 
 
 def report(run: str | Path, *, progress: Progress = silent) -> Run:
@@ -182,7 +197,7 @@ def laws() -> dict:
     """The density laws and the published Galaxies, with parameters, units and sources."""
     return {
         "laws": [record.of_law(name) for name in LAWS],
-        "galaxies": [record.of_galaxy(name, read_galaxy(name)) for name in published_names()],
+        "galaxies": [record.of_galaxy(name, inputs.read_galaxy(name)) for name in published_names()],
     }
 
 

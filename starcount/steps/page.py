@@ -7,13 +7,11 @@ from pathlib import Path
 from starcount.demo import read_truth
 from starcount.errors import InputError
 from starcount.forward import ForwardModel
-from starcount.galaxy import read_galaxy
 from starcount.posterior import Posterior
 from starcount.predict import predict_counts
 from starcount.report import PAGE, page_content, write_page
-from starcount.steps import folder, record
+from starcount.steps import folder, inputs, record
 from starcount.steps.record import Run
-from starcount.survey import read_survey
 
 DRAWN = shutil.ignore_patterns("figures", PAGE)
 
@@ -21,11 +19,11 @@ DRAWN = shutil.ignore_patterns("figures", PAGE)
 def draw(run: Path, progress: Callable[[str, float], None]) -> Run:
     """Draw the page of a run from what lies in its folder, and put it there."""
     content = record.read(run)
-    if not (run / record.SURVEY).is_dir():
+    if not (run / inputs.SURVEY).is_dir():
         raise InputError(f"{run}: made by {content['step']!r}; expected a run of predict, fit or demo")
     progress("predicting", 0.0)
     posterior = Posterior.load(run / record.POSTERIOR) if content["step"] == "fit" else None
-    model = ForwardModel(read_survey(run / record.SURVEY), read_galaxy(run / record.GALAXY))
+    model = ForwardModel(inputs.read_survey(run / inputs.SURVEY), inputs.read_galaxy(run / inputs.GALAXY))
     options = content["options"]
     prediction = (
         predict_counts(model, values=options["values"])
@@ -49,8 +47,8 @@ def _shown(content: Mapping) -> dict:
 
 def _truth(run: Path, model: ForwardModel) -> dict[str, float] | None:
     """The true value of every parameter, where the survey was invented and says so."""
-    truth = read_truth(run / record.SURVEY)
+    truth = read_truth(run / inputs.SURVEY)
     if truth is None:
         return None
     floors = {f"floor.{group.name}": truth.floor for group in model.survey.groups}
-    return {**read_galaxy(truth.galaxy).values, **truth.values, **floors}
+    return {**inputs.read_galaxy(truth.galaxy).values, **truth.values, **floors}

@@ -9,12 +9,11 @@ import tomli_w
 from starcount import stars
 from starcount.errors import InputError
 from starcount.files import write_text
-from starcount.galaxy import Galaxy, published_names, read_galaxy
+from starcount.galaxy import Galaxy
 from starcount.stars.bands import require_band
-from starcount.stars.own_file import settings_of
 from starcount.stars.own_tables import read_own
 from starcount.stars.sources import sources
-from starcount.steps import folder, record
+from starcount.steps import folder, inputs, record
 from starcount.steps.record import Run
 
 CENSUS = "census"
@@ -46,13 +45,13 @@ def show(
     is_file = Path(name).suffix in {".toml", ".ecsv"}
     name = Path(name) if is_file else str(name)
     final = folder.run_path(_run_name(name)) if out is None else folder.new(Path(out))
-    found = read_galaxy(galaxy)
+    found = inputs.read_galaxy(galaxy)
     table, result = _table(name, band, colour, found)
     result["sources"] = list(sources(name, stars.BANDS[band].reference, (band, *(table.colour or ()))))
     options = {"population": str(name), "band": band, "colour": colour and list(colour), "galaxy": str(galaxy)}
-    inputs = [*_files(name), *([] if str(galaxy) in published_names() else [galaxy])]
+    given = [*(inputs.population_files(name) if is_file else []), *inputs.galaxy_files(galaxy, found)]
     with folder.replaced(final) as part:
-        written = record.write(part, final, "population", options, inputs, result)
+        written = record.write(part, final, "population", options, given, result)
         meta = record.meta(written)
         write_table(function_columns(table), part / "function", meta)
         if table.colour:
@@ -65,13 +64,6 @@ def show(
 def _run_name(name: str | Path) -> str:
     plain = name.stem if isinstance(name, Path) else name
     return "population-" + "".join(letter if letter.isalnum() and letter.isascii() else "-" for letter in plain)
-
-
-def _files(name: str | Path) -> list[Path]:
-    """The files behind a population of the user's own."""
-    if not isinstance(name, Path):
-        return []
-    return [name] if name.suffix == ".ecsv" else [name, name.parent / settings_of(name)["table"]]
 
 
 def _table(name: str | Path, band: str, colour: tuple[str, str] | None, galaxy: Galaxy):
@@ -146,7 +138,7 @@ def _result(table, name: str | Path, galaxy: Galaxy) -> dict:
         "components": [
             {"name": c.name, "amplitude": float(amplitudes[c.name]), "anchor": c.anchor}
             for c in galaxy.components
-            if c.population == str(name)
+            if c.population == name or Path(c.population).resolve() == Path(name).resolve()
         ],
     }
 

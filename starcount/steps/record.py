@@ -1,4 +1,4 @@
-"""What a run keeps of itself: run.json, and the survey and the Galaxy as they were used."""
+"""What a run says of itself: run.json, and what the results hold, in plain numbers."""
 
 import json
 from collections.abc import Mapping, Sequence
@@ -8,18 +8,14 @@ from pathlib import Path
 import numpy as np
 
 from starcount.errors import InputError
-from starcount.files import write_bytes, write_text
-from starcount.galaxy import Galaxy, law, published_names
-from starcount.galaxy.read import PUBLISHED
+from starcount.files import write_text
+from starcount.galaxy import Galaxy, law
 from starcount.provenance import provenance
 from starcount.steps.folder import RECORD
-from starcount.survey import Group, Survey, write_survey
+from starcount.survey import Group, Survey
 
 FORMAT = 1
 POSTERIOR = "posterior.nc"
-SURVEY = Path("inputs") / "survey"
-GALAXY = Path("inputs") / "galaxy.toml"
-TRUTH = "truth.toml"
 WORST = 5
 
 
@@ -31,29 +27,6 @@ class Run:
     record: dict
     prediction: object | None = None
     posterior: object | None = None
-
-
-def survey_folder(survey: str | Path) -> Path:
-    """The folder of a survey that was given by folder or by its survey.toml."""
-    path = Path(survey)
-    return path.parent if path.suffix == ".toml" else path
-
-
-def short_name(survey: str | Path) -> str:
-    """The name of a survey's folder, for the names of runs."""
-    return survey_folder(survey).resolve().name
-
-
-def keep_inputs(part: Path, survey: Survey, given: str | Path, galaxy: str | Path) -> list[Path]:
-    """Copy the survey (with its truth, where one lies beside it) and the Galaxy into a run; return the files given."""
-    write_survey(survey, part / SURVEY)
-    truth = survey_folder(given) / TRUTH
-    if truth.is_file():
-        write_bytes(part / SURVEY / TRUTH, truth.read_bytes())
-    published = str(galaxy) in published_names()
-    source = PUBLISHED / f"{galaxy}.toml" if published else Path(galaxy)
-    write_bytes(part / GALAXY, source.read_bytes())
-    return [survey_folder(given), *([] if published else [source])]
 
 
 def write(part: Path, final: Path, step: str, options: Mapping, inputs: Sequence[str | Path], result: Mapping) -> dict:

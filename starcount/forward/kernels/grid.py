@@ -15,18 +15,18 @@ from starcount.compilation import kernel
 def spline_weights(mu, A, factor, weight, grid_start, n_y):
     """For each node the first of the four rows of the grid it meets, their weights (4, node), and where it lies (0..1).
 
-    Nodes outside the grid get the weight zero.
+    Nodes outside the grid get the weight zero. Rows are whole numbers in floating point: vector code has no other floor.
     """
     n, y0, per_dy, top = mu.size, grid_start[0], grid_start[1], float(n_y - 3)
-    row, w, part = np.empty(n, np.int64), np.empty((4, n)), np.empty(n)
+    row, w, part = np.empty(n), np.empty((4, n)), np.empty(n)
     w0, w1, w2, w3 = w[0], w[1], w[2], w[3]
     for j in range(n):
         p = (mu[j] + factor * A[j] - y0) * per_dy
         inside = weight if (p >= 1.0) & (p < top + 1.0) else 0.0
         p = min(max(p, 1.0), top)
-        i = int(p)
+        i = np.floor(p)
         t = p - i
-        row[j] = i - 1
+        row[j] = i - 1.0
         part[j] = t
         w0[j] = inside * t * (t - 0.5 - 0.5 * t * t)
         w1[j] = inside * (1.0 + t * t * (1.5 * t - 2.5))
@@ -50,7 +50,8 @@ def scatter(stars, layer_of, mu, A, factor, weight, grid_start, grid):
     mine = np.empty(layer_of.size)
     for j in range(mu.size):
         take_layers(stars[j], layer_of, mine)
-        rows = grid[row[j] : row[j] + 4]
+        i = int(row[j])
+        rows = grid[i : i + 4]
         a, b, c, d = w0[j], w1[j], w2[j], w3[j]
         for k in range(mine.size):
             s = mine[k]
@@ -65,7 +66,8 @@ def gather(grid, layer_of, mu, A, factor, weight, grid_start, value, by_factor):
     """Add the transpose of ``scatter`` to ``value`` (node, layer), its derivative by ``factor`` to ``by_factor``."""
     row, w, part = spline_weights(mu, A, factor, weight, grid_start, grid.shape[0])
     for j in range(mu.size):
-        rows, here, bent, t = grid[row[j] : row[j] + 4], value[j], by_factor[j], part[j]
+        i = int(row[j])
+        rows, here, bent, t = grid[i : i + 4], value[j], by_factor[j], part[j]
         a, b, c, d = w[0, j], w[1, j], w[2, j], w[3, j]
         inside = a + b + c + d  # the weights sum to the node's own, or to zero outside the grid
         steep = inside * grid_start[1] * A[j]

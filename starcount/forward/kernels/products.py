@@ -40,10 +40,14 @@ def multiply_spans_back(wanted, W, spans, kept, class_first, n_y, back):
 
 
 @kernel
-def matrix_from_spans(grid, size, wanted, spans, kept, class_first, n_y, g_W):
-    """Add the cotangent of W, over the written parts, of one block of fields."""
+def matrix_from_spans(grid, size, wanted, spans, kept, class_first, n_y, begin, g_W):
+    """Add the cotangent of W, over the written parts, of one block of fields; write it if it is the first."""
     for slab in range(spans.shape[0]):
         for c in range(spans.shape[1]):
             i, j, n = meeting(slab, c, spans, kept, class_first, n_y)
             if n > 0:
-                g_W[j : j + n] += np.dot(np.ascontiguousarray(grid[:size, i : i + n]).T, wanted)
+                stars = np.ascontiguousarray(grid[:size, i : i + n]).T
+                if begin:
+                    np.dot(stars, wanted, g_W[j : j + n])
+                else:
+                    g_W[j : j + n] += np.dot(stars, wanted)

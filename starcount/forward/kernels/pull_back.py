@@ -181,6 +181,6 @@ def project_back(v, W, ln_dust, cotangent, want_W, *arrays):
             g_W += np.dot(grid[:size].T, wanted)
         if n_slab > 1:
             if want_W:
-                matrix_from_spans(grid, size, wanted, spans, arrays[22], class_first, n_y, g_W)
+                matrix_from_spans(grid, size, wanted, spans, arrays[22], class_first, n_y, start == 0, g_W)
             clear_spans(grid, size, spans, class_first, n_y)
     return collect(v, theta, g_theta, g_scale, by_height, arrays), g_W, g_dust

@@ -71,10 +71,11 @@ def scatter_in_colour(stars, layer_of, c, class_first, mu, A, E, factor, weight,
             part, one = spread[i * n : (i + 1) * n], w[i, j]
             for k in range(n):
                 part[k] = one * mine[k]
+        first = int(row[j])
         for h in range(4):
             here = spans[slab[j] + h, c]
-            here[0], here[1] = min(here[0], row[j]), max(here[1], row[j] + 4)
-            start = block_start(slab[j] + h, c, class_first, n_y) + row[j] * n
+            here[0], here[1] = min(here[0], first), max(here[1], first + 4)
+            start = block_start(slab[j] + h, c, class_first, n_y) + first * n
             out, one = grid[start : start + 4 * n], v[j, h]
             for k in range(4 * n):
                 out[k] += one * spread[k]
@@ -93,7 +94,7 @@ def gather_in_colour(grid, layer_of, c, class_first, mu, A, E, factor, weight, g
         joined[:] = 0.0
         bent[:] = 0.0
         for h in range(4):
-            start = block_start(slab[j] + h, c, class_first, n_y) + row[j] * n
+            start = block_start(slab[j] + h, c, class_first, n_y) + int(row[j]) * n
             out, one, turn = grid[start : start + 4 * n], v[j, h], slope[j, h]
             for k in range(4 * n):
                 joined[k] += one * out[k]
