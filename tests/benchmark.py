@@ -103,8 +103,9 @@ def predictions(n_field):
     vector = best(lambda: floor_functions(n_node // n_field, n_field, *functions))
     products = best(lambda: floor_products(grid, W, n_field))
     flop = 2.0 * n_field * W.size
-    rows = f"{n_layer} layers in {len(model.rows.layer)} rows"
-    print(f"{n_field} fields x {W.shape[1]} bins, {rows}, {n_node / n_field:.0f} nodes a line, {n_y} steps in y")
+    print(
+        f"{n_field} fields x {W.shape[1]} bins, {n_layer} layers, {n_node / n_field:.0f} nodes a line, {n_y} steps in y"
+    )
     print(f"prepared in {prepared:.1f} s (lines settled to 1e-4)")
     parts = f"functions {1e3 * vector:.0f}, products {1e3 * products:.0f} at {flop / products / 1e9:.0f} Gflop/s"
     print(f"expected counts {1e3 * value:.0f} ms; floor {1e3 * (vector + products):.0f} ms ({parts})")

@@ -188,8 +188,8 @@ def test_the_luminosity_matrix_against_its_plain_twin(default):
     edges = np.array([5.0, 8.02, 15.5])
     group = ForwardModel(skies.survey(skies.circles(0, 60), edges, "V"), default).groups[0]
     found = group.luminosity_matrix().reshape(group.projection.y_mag.size, -1, 2)
-    for row, layer in enumerate(group.rows.layer):
-        below = np.concatenate([[0.0], np.cumsum(group.tables.lf[layer].sum(axis=0))])
+    for row, lf in enumerate(group.tables.lf):
+        below = np.concatenate([[0.0], np.cumsum(lf.sum(axis=0))])
         at = np.interp(edges - group.projection.y_mag[:, None], stars.M_EDGES_MAG, below)
         assert_allclose(found[:, row], np.diff(at, axis=1), rtol=1e-9, atol=1e-11)
 
@@ -203,8 +203,8 @@ def test_factors_on_the_luminosity_functions(default):
     factors[thick] = 1.0 + 0.1 * (KNOTS_MAG - KNOTS_MAG[0])
     middle = (stars.M_EDGES_MAG[1:] + stars.M_EDGES_MAG[:-1]) / 2
     tilted = group.tables.lf[thick] * np.clip(1.0 + 0.1 * (middle + 2.0), 1.0, 2.8)
-    y, rows = group.projection.y_mag, np.isin(group.rows.layer, np.flatnonzero(thick))
-    found = group.luminosity_matrix(factors).reshape(y.size, -1, EDGES.size - 1)[:, rows].sum(axis=1)
+    y = group.projection.y_mag
+    found = group.luminosity_matrix(factors).reshape(y.size, -1, EDGES.size - 1)[:, thick].sum(axis=1)
     below = np.concatenate([[0.0], np.cumsum(tilted.sum(axis=(0, 1)))])
     wanted = np.diff(np.interp(EDGES - y[:, None], stars.M_EDGES_MAG, below), axis=1)
     assert_allclose(found, wanted, rtol=1e-6, atol=1e-9)

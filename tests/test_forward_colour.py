@@ -80,16 +80,14 @@ def test_closed_colour_bins_leave_the_rest_out(in_colour, default, fields):
 def test_the_matrix_holds_every_row_that_is_met(in_colour):
     """No star lies on a row that was left out of the matrix, and the product over spans is the whole one: rounding."""
     arrays, v, W = in_colour.projection.arrays, in_colour.galaxy.vector(), in_colour.luminosity_matrix()
-    n_y, class_first, kept = in_colour.projection.y_mag.size, arrays[17], arrays[22]
+    (n_slab, n_x, n_y, n_layer), kept = arrays[17], arrays[21]
     for ln_dust in (-0.6, 0.0, 0.6):
-        grid = stars_on_grid(v, np.full(6, ln_dust), *arrays).reshape(6, len(kept), -1)
+        grid = stars_on_grid(v, np.full(6, ln_dust), *arrays).reshape(6, n_slab, n_x, n_y, n_layer)
         found, met = 0.0, 0.0
         for slab, by_class in enumerate(kept):
             for c, (first, low, high) in enumerate(by_class):
-                n = class_first[c + 1] - class_first[c]
-                begin = class_first[c] * n_y
-                there = grid[:, slab, begin + low * n : begin + high * n]
-                found, met = found + there @ W[first : first + (high - low) * n], met + there.sum()
+                there = grid[:, slab, c, low:high].reshape(6, -1)
+                found, met = found + there @ W[first : first + there.shape[1]], met + there.sum()
         assert_allclose(met, grid.sum(), rtol=1e-12)
         assert_allclose(in_colour.projection.counts(v, W, np.full(6, ln_dust)), found, rtol=1e-11, atol=1e-12)
 

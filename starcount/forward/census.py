@@ -9,7 +9,7 @@ import numpy as np
 from starcount import stars
 from starcount.forward.group import GroupModel
 from starcount.forward.luminosity import sphere_points
-from starcount.forward.matrix import LuminosityMatrix, Rows
+from starcount.forward.matrix import LuminosityMatrix
 from starcount.forward.projection import Grid, Lines, make_projection
 from starcount.forward.response import Y_STEP_MAG
 from starcount.forward.tables import StarTables
@@ -25,7 +25,6 @@ def make_census_model(galaxy: Galaxy, reference: str) -> GroupModel:
     used = np.zeros((radii.size, census.n.size), bool)
     used[field, np.arange(census.n.size)] = True
     n_layer = len(galaxy.layers)
-    rows = Rows(np.arange(n_layer), np.zeros(n_layer, int), np.array([0, n_layer]))
     tables = StarTables(galaxy, reference, None, np.array([5800.0]))
     lines, grid = _spheres(galaxy, radii), Grid(_Y_MAG, np.zeros(1))
     reach = np.tile([-1.0, 1.0], (n_layer, 1))
@@ -35,7 +34,7 @@ def make_census_model(galaxy: Galaxy, reference: str) -> GroupModel:
         galaxy=galaxy,
         counts=np.where(used, census.n, 0),
         used=used,
-        projection=make_projection(galaxy.layer_table(), galaxy.R0_kpc, lines, grid, rows, reach),
+        projection=make_projection(galaxy.layer_table(), galaxy.R0_kpc, lines, grid, reach),
         matrix=LuminosityMatrix(
             n_slab=1,
             layer=np.tile(np.arange(n_layer), _Y_MAG.size),
@@ -44,7 +43,6 @@ def make_census_model(galaxy: Galaxy, reference: str) -> GroupModel:
             matrix_of=lambda table, slab: _rows_of(census, table),
         ),
         tables=None,
-        rows=rows,
         extra_names=(),
         extra=np.zeros((0, *used.shape)),
     )

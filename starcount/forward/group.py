@@ -9,7 +9,7 @@ from starcount import dust, stars
 from starcount.errors import InputError
 from starcount.forward.extra import extra_rows
 from starcount.forward.lines import Coefficients, coefficients, group_lines
-from starcount.forward.matrix import LuminosityMatrix, Rows, occupied_rows
+from starcount.forward.matrix import LuminosityMatrix
 from starcount.forward.nodes import MU_FIRST_MAG
 from starcount.forward.projection import Grid, Lines, Projection, make_projection, y_grid
 from starcount.forward.response import Y_STEP_MAG, Response, excess_grid, make_response
@@ -29,7 +29,7 @@ class GroupModel:
     """A group of fields, or the census, with all that is fixed while a Galaxy's numbers change.
 
     ``counts`` and ``used`` (field, bin) are the data (counts None where there are none); ``matrix`` the luminosity
-    matrix, ``rows`` its rows at one shift, ``tables`` the stars it is made of (None for the census); ``extra`` (extra,
+    matrix, ``tables`` the stars it is made of (None for the census); ``extra`` (extra,
     field, bin) expected counts of sources that are not stars of the Galaxy, at amplitude 1.
     """
 
@@ -41,7 +41,6 @@ class GroupModel:
     projection: Projection
     matrix: LuminosityMatrix
     tables: StarTables | None
-    rows: Rows
     extra_names: tuple[str, ...]
     extra: np.ndarray
 
@@ -70,7 +69,7 @@ class GroupModel:
             return {**self._by_component(v, W), **dict(zip(self.extra_names, self.extra, strict=True))}
         found = {}
         for c, name in enumerate(stars.CLASSES):
-            mine = self._by_component(v, self._of(self.tables.of_class(c, factors)))
+            mine = self._by_component(v, self.matrix.of(self.tables.of_class(c, factors)))
             found |= {(component, name): counts for component, counts in mine.items()}
         return {**found, **{(name, ""): counts for name, counts in zip(self.extra_names, self.extra, strict=True)}}
 
@@ -79,10 +78,9 @@ class GroupModel:
         """The share of the expected stars whose magnitudes rest on relations outside their verified range."""
         v = self.galaxy.vector()
         counted = self.projection.counts(v, self.matrix.whole).sum()
-        return float(self.projection.counts(v, self._of(self.tables.outside())).sum() / counted) if counted else 0.0
-
-    def _of(self, table: np.ndarray) -> np.ndarray:
-        return self.matrix.of(self.rows.take(table))
+        return (
+            float(self.projection.counts(v, self.matrix.of(self.tables.outside())).sum() / counted) if counted else 0.0
+        )
 
     def _by_component(self, v: np.ndarray, W: np.ndarray) -> dict[str, np.ndarray]:
         found = {}
@@ -100,9 +98,8 @@ def make_group_model(group: Group, galaxy: Galaxy, accuracy: float = ACCURACY, d
     temperatures = dust.extinction_temperatures((group.band, *(group.colour or ())))
     tables = StarTables(galaxy, group.band, group.colour, temperatures)
     reddening = coefficients(group.band, group.colour, temperatures)
-    rows = occupied_rows(tables.whole)
     reach = _layer_reach(group, tables)
-    lines = _settled_lines(group, galaxy, tables, reddening, rows, reach, accuracy, dust_range)
+    lines = _settled_lines(group, galaxy, tables, reddening, reach, accuracy, dust_range)
     y = _y_grid(group, tables, (lines.mu_mag.min(), (lines.mu_mag + dust_range * lines.A_mag).max()))
     response = make_response(group, y, _excess_grid(group, tables, lines, dust_range), _gain(group, tables, y))
     grid, names = Grid(y, response.excess_mag), tuple(group.extra)
@@ -116,47 +113,38 @@ def make_group_model(group: Group, galaxy: Galaxy, accuracy: float = ACCURACY, d
         galaxy=galaxy,
         counts=group.counts,
         used=group.used,
-        projection=make_projection(galaxy.layer_table(), galaxy.R0_kpc, lines, grid, rows, reach, ranges, dust_range),
-        matrix=_matrix(tables, rows, response, ranges),
+        projection=make_projection(galaxy.layer_table(), galaxy.R0_kpc, lines, grid, reach, ranges, dust_range),
+        matrix=_matrix(tables, response, ranges),
         tables=tables,
-        rows=rows,
         extra_names=names,
         extra=extra if names else np.zeros((0, len(group.fields.name), group.n_bin)),
     )
 
 
-def _matrix(tables: StarTables, rows: Rows, response: Response, ranges: np.ndarray | None) -> LuminosityMatrix:
-    n_y, n_slab = response.y_mag.size, response.excess_mag.size
-
-    def kept(slab: int) -> np.ndarray | None:
-        return None if ranges is None else ranges[slab]
-
-    def matrix_of(table: np.ndarray, slab: int) -> np.ndarray:
-        needed = (0, n_y) if ranges is None else (kept(slab)[:, 0].min(), kept(slab)[:, 1].max())
-        return rows.flat(response.slab(table, slab, needed), kept(slab))
-
-    layer = np.broadcast_to(rows.layer, (n_y, rows.layer.size))
+def _matrix(tables: StarTables, response: Response, ranges: np.ndarray | None) -> LuminosityMatrix:
+    n_layer, n_x, _, _ = tables.whole.shape
+    n_slab = response.excess_mag.size
+    n_shift = n_x * response.y_mag.size if ranges is None else int((ranges[..., 1] - ranges[..., 0]).sum())
     return LuminosityMatrix(
         n_slab=n_slab,
-        layer=np.concatenate([rows.flat(layer, kept(slab)) for slab in range(n_slab)]),
+        layer=np.tile(np.arange(n_layer), n_shift),
         width=response.by_colour.shape[3],
-        table_of=lambda knot: rows.take(tables.at_knot(knot)),
-        matrix_of=matrix_of,
+        table_of=tables.at_knot,
+        matrix_of=lambda table, slab: response.slab(table, slab, None if ranges is None else ranges[slab]),
     )
 
 
 def _settled_lines(
-    group: Group, galaxy: Galaxy, tables: StarTables, reddening: Coefficients, rows: Rows, reach, accuracy, dust_range
+    group: Group, galaxy: Galaxy, tables: StarTables, reddening: Coefficients, reach, accuracy, dust_range
 ) -> Lines:
     """The sight lines, settled for counts in magnitude only: colours follow from the same nodes."""
     y = _y_grid(group, tables, (MU_FIRST_MAG, _LAST_Y_MAG))
     response = make_response(group, y, None)
-    table = rows.take(tables.whole.sum(axis=3, keepdims=True))
-    W = rows.flat(response.slab(table, 0))
+    W = response.slab(tables.whole.sum(axis=3, keepdims=True), 0)
     v, layers, grid = galaxy.vector(), galaxy.layer_table(), Grid(y, np.zeros(1))
 
     def count(lines: Lines) -> np.ndarray:
-        return make_projection(layers, galaxy.R0_kpc, lines, grid, rows, reach).counts(v, W)
+        return make_projection(layers, galaxy.R0_kpc, lines, grid, reach).counts(v, W)
 
     y_range = reach[:, 0].min(), reach[:, 1].max()
     return group_lines(group, galaxy, reddening, count, y_range, accuracy, dust_range)

@@ -11,43 +11,8 @@ from starcount.forward.knots import KNOTS_MAG
 
 
 @dataclass(frozen=True, eq=False)
-class Rows:
-    """The rows of the grid at one shift and excess: a layer's stars of one class of temperature.
-
-    ``layer`` and ``temperature`` (row,) are indices; rows are ordered by temperature, and ``class_first``
-    (temperature + 1,) is where each begins.
-    """
-
-    layer: np.ndarray
-    temperature: np.ndarray
-    class_first: np.ndarray
-
-    def take(self, table: np.ndarray) -> np.ndarray:
-        """Return the rows (row, cell, colour cell) of a table (layer, temperature, cell, colour cell)."""
-        return table[self.layer, self.temperature]
-
-    def flat(self, blocks: np.ndarray, ranges: np.ndarray | None = None) -> np.ndarray:
-        """Return matrices (y, row, ...) of one slab in the order of the flat grid: (temperature, y, row of it).
-
-        ``ranges`` (temperature, 2) are the shifts to be kept; all without.
-        """
-        n_y, found = len(blocks), []
-        for c, (a, b) in enumerate(zip(self.class_first[:-1], self.class_first[1:], strict=True)):
-            low, high = (0, n_y) if ranges is None else ranges[c]
-            found.append(blocks[low:high, a:b].reshape(-1, *blocks.shape[2:]))
-        return np.concatenate(found)
-
-
-def occupied_rows(table: np.ndarray) -> Rows:
-    """Return the rows of a table (layer, temperature, cell, colour cell) that hold stars."""
-    temperature, layer = np.nonzero(table.any(axis=(2, 3)).T)
-    first = np.searchsorted(temperature, np.arange(table.shape[1] + 1))
-    return Rows(layer, temperature, first)
-
-
-@dataclass(frozen=True, eq=False)
 class LuminosityMatrix:
-    """W (row, bin), row by row of the flat grid (slab, temperature, y, row of the temperature).
+    """W (row, bin), row by row of the flat grid (slab, temperature, y, layer).
 
     ``table_of(knot)`` returns the stars weighted by the hat function of a knot (None: all, unweighted);
     ``matrix_of(table, slab)`` a slab's matrix (row, bin). ``layer`` (row,) is the layer of each row of W, ``width`` the

@@ -6,7 +6,6 @@ import numpy as np
 
 from starcount.errors import InputError
 from starcount.forward import kernels
-from starcount.forward.matrix import Rows
 from starcount.forward.response import Y_STEP_MAG
 from starcount.galaxy.galaxy import LayerTable
 
@@ -38,10 +37,10 @@ class Projection:
     """Sight lines, the layers of a Galaxy and the grid in y, as the flat arrays that the kernels take.
 
     ``arrays``: index, scale, n_parameter, amplitude, anchor and the three addresses of ``LayerTable``; R0; then
-    direction, first_line, first_node, d_kpc, volume, mu, A and node_weight of ``Lines``; class_first (the first row of
-    each temperature, and the end); the grid's first y, steps per mag and length, then those of the colour excess; the
-    shifts (layer, 2) between which a layer can put stars into the bins; the layer of each row; E of ``Lines``; and the
-    rows that the matrix has (``kernels.products``). ``dust_range`` is the factor by which the extinction of a field may
+    direction, first_line, first_node, d_kpc, volume, mu, A and node_weight of ``Lines``; the shape of the grid (slab,
+    temperature, y, layer); its first y, steps per mag and length, then those of the colour excess; the shifts (layer, 2)
+    between which a layer can put stars into the bins; E of ``Lines``; and the rows that the matrix has
+    (``kernels.products``). ``dust_range`` is the factor by which the extinction of a field may
     be raised or lowered before stars are missed.
     """
 
@@ -99,12 +98,11 @@ def make_projection(
     R0_kpc: float,
     lines: Lines,
     grid: Grid,
-    rows: Rows,
     y_reach_mag: np.ndarray,
     ranges: np.ndarray | None = None,
     dust_range: float = 1.0,
 ) -> Projection:
-    """Return the projection of a Galaxy's layers along sight lines onto a grid whose rows are ``rows``.
+    """Return the projection of a Galaxy's layers along sight lines onto a grid.
 
     Stars of a layer outside ``y_reach_mag`` (layer, 2) are left out of the sums. In colour, ``ranges`` (slab,
     temperature, 2) are the shifts for which the luminosity matrix has rows. ``dust_range``: as in ``Projection``.
@@ -129,20 +127,19 @@ def make_projection(
         lines.mu_mag,
         lines.A_mag,
         lines.node_weight,
-        rows.class_first.astype(np.int64),
+        np.array([grid.excess_mag.size, len(lines.A_mag), grid.y_mag.size, len(table.component)]),
         np.array([*_axis(grid.y_mag), *_axis(grid.excess_mag)]),
         y_reach_mag.astype(float),
-        rows.layer.astype(np.int64),
         np.zeros((1, 1, 1)) if lines.E_mag is None else lines.E_mag,
-        np.zeros((1, 1, 3), np.int64) if ranges is None else _kept(rows, ranges),
+        np.zeros((1, 1, 3), np.int64) if ranges is None else _kept(ranges, len(table.component)),
     )
     flat = tuple(np.ascontiguousarray(a) for a in arrays)
     return Projection(lines=lines, y_mag=grid.y_mag, arrays=flat, dust_range=dust_range)
 
 
-def _kept(rows: Rows, ranges: np.ndarray) -> np.ndarray:
+def _kept(ranges: np.ndarray, n_layer: int) -> np.ndarray:
     """The first row of the matrix for each slab and temperature, and the range of shifts, (slab, temperature, 3)."""
-    sizes = (ranges[..., 1] - ranges[..., 0]) * np.diff(rows.class_first)
+    sizes = (ranges[..., 1] - ranges[..., 0]) * n_layer
     first = np.concatenate([[0], np.cumsum(sizes.ravel())[:-1]]).reshape(sizes.shape)
     return np.concatenate([first[..., None], ranges], axis=-1).astype(np.int64)
 

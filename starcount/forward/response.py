@@ -42,21 +42,30 @@ class Response:
     def n_bin(self) -> int:
         return self.by_magnitude.shape[2] * self.by_colour.shape[3]
 
-    def slab(self, table: np.ndarray, slab: int, y_range: tuple[int, int] | None = None) -> np.ndarray:
-        """Return the matrix (y, row, bin) of one slab for a table of stars (row, cell, colour cell).
+    def slab(self, table: np.ndarray, slab: int, ranges: np.ndarray | None = None) -> np.ndarray:
+        """Return the matrix (row, bin) of one slab for a table of stars (layer, temperature, cell, colour cell).
 
-        Outside ``y_range``, indices of shifts, it is zero.
+        Rows are ordered by temperature, shift and layer; ``ranges`` (temperature, 2) are the shifts to be kept, all
+        without.
         """
-        found = np.zeros((self.y_mag.size, len(table), self.n_bin))
+        whole = (0, self.y_mag.size)
+        found = [
+            self._shifts(table[:, x], slab, *(whole if ranges is None else ranges[x])) for x in range(table.shape[1])
+        ]
+        return np.concatenate([shifts.reshape(-1, self.n_bin) for shifts in found])
+
+    def _shifts(self, table: np.ndarray, slab: int, first: int, end: int) -> np.ndarray:
+        """The matrix (y, layer, bin) of some shifts for a table (layer, cell, colour cell)."""
+        found = np.zeros((end - first, len(table), self.n_bin))
         occupied = np.flatnonzero(table.any(axis=(0, 2)))
         if not occupied.size:
             return found
         c_lo, c_hi = occupied[0], occupied[-1] + 1
         n_true, n_node, n_m = self.by_magnitude.shape
-        # (cell, node, row, colour bin), so that a range of cells is one block of memory
+        # (cell, node, layer, colour bin), so that a range of cells is one block of memory
         folded = np.tensordot(table[:, c_lo:c_hi], self.by_colour[slab], axes=(2, 1)).transpose(1, 2, 0, 3)
         folded = np.ascontiguousarray(folded)
-        for i in range(*(y_range or (0, self.y_mag.size))):
+        for i in range(first, end):
             shift = self.first_cell - _STEPS * i
             lo, hi = max(c_lo, shift), min(c_hi, shift + n_true)
             if hi <= lo:
@@ -65,7 +74,7 @@ class Response:
             if self.gain is not None:
                 taken = taken * self.gain[i, lo:hi, None, None]
             counted = taken.reshape(-1, n_m).T @ folded[lo - c_lo : hi - c_lo].reshape((hi - lo) * n_node, -1)
-            found[i] = counted.reshape(n_m, len(table), -1).transpose(1, 0, 2).reshape(len(table), -1)
+            found[i - first] = counted.reshape(n_m, len(table), -1).transpose(1, 0, 2).reshape(len(table), -1)
         return found
 
 

@@ -1,7 +1,7 @@
 """Moving stars from the nodes of a sight line onto the regular grid in the shift y, and back.
 
-The grid of a field is flat: for each slab of colour excess and each temperature class one block (y, row of the class);
-counts without colour have one slab. The weights along y are those of the Catmull-Rom spline (Catmull & Rom 1974):
+The grid of a field is flat: for each slab of colour excess and each class of temperature one block (y, layer); counts
+without colour have one slab. The weights along y are those of the Catmull-Rom spline (Catmull & Rom 1974):
 cubic, interpolating, with a continuous slope, so that the derivative by the extinction is exact and smooth. Stars
 outside the grid are in no bin. For the slabs see ``kernels.slabs``.
 """
@@ -36,25 +36,16 @@ def spline_weights(mu, A, factor, weight, grid_start, n_y):
 
 
 @kernel
-def take_layers(stars, layer_of, mine):
-    """Copy the stars (layer,) of one node to the rows of a class, each of which belongs to a layer."""
-    for k in range(layer_of.size):
-        mine[k] = stars[layer_of[k]]
-
-
-@kernel
-def scatter(stars, layer_of, mu, A, factor, weight, grid_start, grid):
-    """Add the stars (node, layer) to a class's block of the grid (y, row)."""
+def scatter(stars, mu, A, factor, weight, grid_start, grid):
+    """Add the stars (node, layer) to a block of the grid (y, layer)."""
     row, w, _ = spline_weights(mu, A, factor, weight, grid_start, grid.shape[0])
     w0, w1, w2, w3 = w[0], w[1], w[2], w[3]
-    mine = np.empty(layer_of.size)
     for j in range(mu.size):
-        take_layers(stars[j], layer_of, mine)
-        i = int(row[j])
+        i, here = int(row[j]), stars[j]
         rows = grid[i : i + 4]
         a, b, c, d = w0[j], w1[j], w2[j], w3[j]
-        for k in range(mine.size):
-            s = mine[k]
+        for k in range(here.size):
+            s = here[k]
             rows[0, k] += a * s
             rows[1, k] += b * s
             rows[2, k] += c * s
@@ -62,7 +53,7 @@ def scatter(stars, layer_of, mu, A, factor, weight, grid_start, grid):
 
 
 @kernel
-def gather(grid, layer_of, mu, A, factor, weight, grid_start, value, by_factor):
+def gather(grid, mu, A, factor, weight, grid_start, value, by_factor):
     """Add the transpose of ``scatter`` to ``value`` (node, layer), its derivative by ``factor`` to ``by_factor``."""
     row, w, part = spline_weights(mu, A, factor, weight, grid_start, grid.shape[0])
     for j in range(mu.size):
@@ -73,7 +64,7 @@ def gather(grid, layer_of, mu, A, factor, weight, grid_start, value, by_factor):
         steep = inside * grid_start[1] * A[j]
         da, db = steep * (2.0 * t - 1.5 * t * t - 0.5), steep * t * (4.5 * t - 5.0)
         dc, dd = steep * (0.5 + t * (4.0 - 4.5 * t)), steep * t * (1.5 * t - 1.0)
-        for k in range(layer_of.size):
+        for k in range(here.size):
             g0, g1, g2, g3 = rows[0, k], rows[1, k], rows[2, k], rows[3, k]
-            here[layer_of[k]] += a * g0 + b * g1 + c * g2 + d * g3
-            bent[layer_of[k]] += da * g0 + db * g1 + dc * g2 + dd * g3
+            here[k] += a * g0 + b * g1 + c * g2 + d * g3
+            bent[k] += da * g0 + db * g1 + dc * g2 + dd * g3

@@ -23,23 +23,20 @@ BLOCK_IN_COLOUR = 96  # the matrix is too large for any cache: more fields meet 
 def fill_grid(f, v, theta, ln_scale, factor, arrays, space, spans, grid):
     """Add the stars of field ``f``, the sum over its sight lines, to its flat grid, which is zero outside ``spans``."""
     first_line, first_node = arrays[10], arrays[11]
-    mu, A, node_weight, class_first, grid_start = arrays[14], arrays[15], arrays[16], arrays[17], arrays[18]
-    layer_of, E = arrays[20], arrays[21]
-    n_y, in_colour = int(grid_start[2]), grid_start[5] > 1.0
+    mu, A, node_weight, shape, grid_start, E = arrays[14], arrays[15], arrays[16], arrays[17], arrays[18], arrays[20]
     for s in range(first_line[f], first_line[f + 1]):
         a, b = first_node[s], first_node[s + 1]
         found = line_stars(s, v, theta, ln_scale, factor, arrays, space)
-        for c in range(class_first.size - 1):
-            mine = layer_of[class_first[c] : class_first[c + 1]]
+        for c in range(shape[1]):
             for e in range(node_weight.size):
-                if in_colour:
+                if shape[0] > 1:
                     scatter_in_colour(
-                        found, mine, c, class_first, mu[a:b], A[c, e, a:b], E[c, e, a:b], factor, node_weight[e],
-                        grid_start, spans, grid,
+                        found, c, shape, mu[a:b], A[c, e, a:b], E[c, e, a:b], factor, node_weight[e], grid_start, spans,
+                        grid,
                     )  # fmt: skip
                 else:
-                    block = block_of(grid, 0, c, class_first, n_y)
-                    scatter(found, mine, mu[a:b], A[c, e, a:b], factor, node_weight[e], grid_start, block)
+                    block = block_of(grid, c, shape)
+                    scatter(found, mu[a:b], A[c, e, a:b], factor, node_weight[e], grid_start, block)
 
 
 @kernel
@@ -53,10 +50,10 @@ def work_space(arrays):
 @kernel
 def empty_grid(n_field, arrays):
     """Flat grids of zeros (field, row), and spans (slab, class, 2) that hold nothing."""
-    class_first, n_y, n_slab = arrays[17], int(arrays[18][2]), int(arrays[18][5])
-    spans = np.zeros((n_slab, class_first.size - 1, 2), np.int64)
-    spans[:, :, 0] = n_y
-    return np.zeros((n_field, n_slab * class_first[-1] * n_y)), spans
+    shape = arrays[17]
+    spans = np.zeros((shape[0], shape[1], 2), np.int64)
+    spans[:, :, 0] = shape[2]
+    return np.zeros((n_field, shape[0] * shape[1] * shape[2] * shape[3])), spans
 
 
 @kernel
@@ -78,22 +75,22 @@ def project(v, W, ln_dust, *arrays):
     ``v`` is ``Galaxy.vector``, ``W`` the luminosity matrix (row, bin), ``ln_dust`` (field,) the logarithm of the factor
     on each field's extinction.
     """
-    n_field, class_first, n_y, n_slab = arrays[10].size - 1, arrays[17], int(arrays[18][2]), int(arrays[18][5])
+    n_field, shape = arrays[10].size - 1, arrays[17]
     theta, ln_scale = layer_numbers(v, arrays)
     space = work_space(arrays)
-    block = BLOCK if n_slab == 1 else BLOCK_IN_COLOUR
+    block = BLOCK if shape[0] == 1 else BLOCK_IN_COLOUR
     grid, spans = empty_grid(min(block, n_field), arrays)
     counts = np.zeros((n_field, W.shape[1]))
     for start in range(0, n_field, block):
         size = min(block, n_field - start)
-        if n_slab == 1:
+        if shape[0] == 1:
             grid[:] = 0.0
         for i in range(size):
             f = start + i
             fill_grid(f, v, theta, ln_scale, exp(ln_dust[f]), arrays, space, spans, grid[i])
-        if n_slab == 1:
+        if shape[0] == 1:
             np.dot(grid[:size], W, counts[start : start + size])
         else:
-            multiply_spans(grid, size, W, spans, arrays[22], class_first, n_y, counts[start : start + size])
-            clear_spans(grid, size, spans, class_first, n_y)
+            multiply_spans(grid, size, W, spans, arrays[21], shape, counts[start : start + size])
+            clear_spans(grid, size, spans, shape)
     return counts

@@ -74,22 +74,19 @@ def reverse_line(s, v, theta, arrays, space, n, value, moved, slopes, g_theta, g
 @kernel
 def gather_line(a, b, factor, arrays, cotangent, got, bent):
     """Bring the cotangent of the grid to the nodes ``a`` to ``b``: by the stars, and by the extinction's factor."""
-    mu, A, node_weight, class_first, grid_start = arrays[14], arrays[15], arrays[16], arrays[17], arrays[18]
-    layer_of, E = arrays[20], arrays[21]
-    n_y, in_colour = int(grid_start[2]), grid_start[5] > 1.0
+    mu, A, node_weight, shape, grid_start, E = arrays[14], arrays[15], arrays[16], arrays[17], arrays[18], arrays[20]
     got[:] = 0.0
     bent[:] = 0.0
-    for c in range(class_first.size - 1):
-        mine = layer_of[class_first[c] : class_first[c + 1]]
+    for c in range(shape[1]):
         for e in range(node_weight.size):
-            if in_colour:
+            if shape[0] > 1:
                 gather_in_colour(
-                    cotangent, mine, c, class_first, mu[a:b], A[c, e, a:b], E[c, e, a:b], factor, node_weight[e],
-                    grid_start, got, bent,
+                    cotangent, c, shape, mu[a:b], A[c, e, a:b], E[c, e, a:b], factor, node_weight[e], grid_start, got,
+                    bent,
                 )  # fmt: skip
             else:
-                block = block_of(cotangent, 0, c, class_first, n_y)
-                gather(block, mine, mu[a:b], A[c, e, a:b], factor, node_weight[e], grid_start, got, bent)
+                block = block_of(cotangent, c, shape)
+                gather(block, mu[a:b], A[c, e, a:b], factor, node_weight[e], grid_start, got, bent)
 
 
 @kernel
@@ -148,39 +145,39 @@ def project_back(v, W, ln_dust, cotangent, want_W, *arrays):
 
     ``cotangent`` (field, bin). The gradient by ``W`` costs one more matrix product; unless ``want_W`` it is zero.
     """
-    n_field, class_first, n_y, n_slab = arrays[10].size - 1, arrays[17], int(arrays[18][2]), int(arrays[18][5])
+    n_field, shape = arrays[10].size - 1, arrays[17]
     theta, ln_scale = layer_numbers(v, arrays)
     space = work_space(arrays)
     more = more_space(space[0].shape[1], arrays[0].shape[0], arrays[0].shape[1])
     g_theta, g_scale, g_W = np.zeros(theta.shape), np.zeros(ln_scale.size), np.zeros(W.shape)
     g_dust, by_height = np.zeros(n_field), 0.0
-    block = BLOCK if n_slab == 1 else BLOCK_IN_COLOUR
+    block = BLOCK if shape[0] == 1 else BLOCK_IN_COLOUR
     grid, spans = empty_grid(min(block, n_field), arrays)
     back = np.zeros(grid.shape)
-    W_transposed = np.ascontiguousarray(W.T) if n_slab == 1 else np.zeros((0, 0))
+    W_transposed = np.ascontiguousarray(W.T) if shape[0] == 1 else np.zeros((0, 0))
     for start in range(0, n_field, block):
         size = min(block, n_field - start)
         wanted = cotangent[start : start + size]
-        if want_W or n_slab > 1:
-            if n_slab == 1:
+        if want_W or shape[0] > 1:
+            if shape[0] == 1:
                 grid[:] = 0.0
             for i in range(size):
                 f = start + i
                 fill_grid(f, v, theta, ln_scale, exp(ln_dust[f]), arrays, space, spans, grid[i])
-        if n_slab == 1:
+        if shape[0] == 1:
             np.dot(wanted, W_transposed, back[:size])
         else:
-            multiply_spans_back(wanted, W, spans, arrays[22], class_first, n_y, back)
+            multiply_spans_back(wanted, W, spans, arrays[21], shape, back)
         for i in range(size):
             f = start + i
             height, g_dust[f] = reverse_field(
                 f, v, theta, ln_scale, exp(ln_dust[f]), arrays, space, more, back[i], g_theta, g_scale
             )
             by_height += height
-        if want_W and n_slab == 1:
+        if want_W and shape[0] == 1:
             g_W += np.dot(grid[:size].T, wanted)
-        if n_slab > 1:
+        if shape[0] > 1:
             if want_W:
-                matrix_from_spans(grid, size, wanted, spans, arrays[22], class_first, n_y, start == 0, g_W)
-            clear_spans(grid, size, spans, class_first, n_y)
+                matrix_from_spans(grid, size, wanted, spans, arrays[21], shape, start == 0, g_W)
+            clear_spans(grid, size, spans, shape)
     return collect(v, theta, g_theta, g_scale, by_height, arrays), g_W, g_dust

@@ -11,7 +11,7 @@ smaller than that of the Catmull-Rom weights: colour sequences are narrow.
 import numpy as np
 
 from starcount.compilation import kernel
-from starcount.forward.kernels.grid import spline_weights, take_layers
+from starcount.forward.kernels.grid import spline_weights
 
 
 @kernel
@@ -40,33 +40,32 @@ def excess_weights(E, factor, grid_start):
 
 
 @kernel
-def block_of(grid, slab, c, class_first, n_y):
-    """The block (y, row) of a slab and class, a view of the flat grid of a field."""
-    n_row, first, last = class_first[-1], class_first[c], class_first[c + 1]
-    start = (slab * n_row + first) * n_y
-    return grid[start : start + (last - first) * n_y].reshape(n_y, last - first)
+def block_start(slab, c, shape):
+    """Where the block of a slab and class begins in a flat grid of ``shape`` (slab, class, y, layer)."""
+    return (slab * shape[1] + c) * shape[2] * shape[3]
 
 
 @kernel
-def block_start(slab, c, class_first, n_y):
-    """Where the block of a slab and class begins in the flat grid, and in the rows of the matrix."""
-    return (slab * class_first[-1] + class_first[c]) * n_y
+def block_of(grid, c, shape):
+    """The block (y, layer) of a class of the first slab, a view of the flat grid of a field."""
+    start = block_start(0, c, shape)
+    return grid[start : start + shape[2] * shape[3]].reshape(shape[2], shape[3])
 
 
 @kernel
-def scatter_in_colour(stars, layer_of, c, class_first, mu, A, E, factor, weight, grid_start, spans, grid):
+def scatter_in_colour(stars, c, shape, mu, A, E, factor, weight, grid_start, spans, grid):
     """Add the stars (node, layer) of class ``c`` to the grid of a field; widen ``spans`` (slab, class, 2) to them.
 
     The four rows of y that a node meets lie side by side, so that each slab takes one multiple of the same numbers.
     """
-    n_y, n = int(grid_start[2]), layer_of.size
-    row, w, _ = spline_weights(mu, A, factor, weight, grid_start, n_y)
+    n = shape[3]
+    row, w, _ = spline_weights(mu, A, factor, weight, grid_start, shape[2])
     slab, v, _ = excess_weights(E, factor, grid_start)
-    mine, spread = np.empty(n), np.empty(4 * n)
+    spread = np.empty(4 * n)
     for j in range(mu.size):
         if w[1, j] == 0.0:  # outside the grid
             continue
-        take_layers(stars[j], layer_of, mine)
+        mine = stars[j]
         for i in range(4):
             part, one = spread[i * n : (i + 1) * n], w[i, j]
             for k in range(n):
@@ -75,17 +74,17 @@ def scatter_in_colour(stars, layer_of, c, class_first, mu, A, E, factor, weight,
         for h in range(4):
             here = spans[slab[j] + h, c]
             here[0], here[1] = min(here[0], first), max(here[1], first + 4)
-            start = block_start(slab[j] + h, c, class_first, n_y) + first * n
+            start = block_start(slab[j] + h, c, shape) + first * n
             out, one = grid[start : start + 4 * n], v[j, h]
             for k in range(4 * n):
                 out[k] += one * spread[k]
 
 
 @kernel
-def gather_in_colour(grid, layer_of, c, class_first, mu, A, E, factor, weight, grid_start, value, by_factor):
+def gather_in_colour(grid, c, shape, mu, A, E, factor, weight, grid_start, value, by_factor):
     """Add the transpose of ``scatter_in_colour`` to ``value`` (node, layer), its derivative by ``factor`` likewise."""
-    n_y, n = int(grid_start[2]), layer_of.size
-    row, w, part = spline_weights(mu, A, factor, weight, grid_start, n_y)
+    n = shape[3]
+    row, w, part = spline_weights(mu, A, factor, weight, grid_start, shape[2])
     slab, v, slope = excess_weights(E, factor, grid_start)
     joined, bent, d = np.empty(4 * n), np.empty(4 * n), np.empty(4)
     for j in range(mu.size):
@@ -94,7 +93,7 @@ def gather_in_colour(grid, layer_of, c, class_first, mu, A, E, factor, weight, g
         joined[:] = 0.0
         bent[:] = 0.0
         for h in range(4):
-            start = block_start(slab[j] + h, c, class_first, n_y) + int(row[j]) * n
+            start = block_start(slab[j] + h, c, shape) + int(row[j]) * n
             out, one, turn = grid[start : start + 4 * n], v[j, h], slope[j, h]
             for k in range(4 * n):
                 joined[k] += one * out[k]
@@ -102,22 +101,20 @@ def gather_in_colour(grid, layer_of, c, class_first, mu, A, E, factor, weight, g
         t, steep = part[j], (w[0, j] + w[1, j] + w[2, j] + w[3, j]) * grid_start[1] * A[j]
         d[0], d[1] = steep * (2.0 * t - 1.5 * t * t - 0.5), steep * t * (4.5 * t - 5.0)
         d[2], d[3] = steep * (0.5 + t * (4.0 - 4.5 * t)), steep * t * (1.5 * t - 1.0)
-        redder = grid_start[4] * E[j]
+        redder, here, moves = grid_start[4] * E[j], value[j], by_factor[j]
         for i in range(4):
             one, moved, turned = w[i, j], d[i], w[i, j] * redder
             for k in range(n):
-                value[j, layer_of[k]] += one * joined[i * n + k]
-                by_factor[j, layer_of[k]] += moved * joined[i * n + k] + turned * bent[i * n + k]
+                here[k] += one * joined[i * n + k]
+                moves[k] += moved * joined[i * n + k] + turned * bent[i * n + k]
 
 
 @kernel
-def clear_spans(grid, size, spans, class_first, n_y):
+def clear_spans(grid, size, spans, shape):
     """Set the written parts of the first ``size`` grids to zero, and forget them."""
-    for slab in range(spans.shape[0]):
-        for c in range(spans.shape[1]):
-            n = class_first[c + 1] - class_first[c]
-            start = block_start(slab, c, class_first, n_y)
-            low, high = spans[slab, c, 0], spans[slab, c, 1]
+    for slab in range(shape[0]):
+        for c in range(shape[1]):
+            start, low, high = block_start(slab, c, shape), spans[slab, c, 0], spans[slab, c, 1]
             if high > low:
-                grid[:size, start + low * n : start + high * n] = 0.0
-            spans[slab, c, 0], spans[slab, c, 1] = n_y, 0
+                grid[:size, start + low * shape[3] : start + high * shape[3]] = 0.0
+            spans[slab, c, 0], spans[slab, c, 1] = shape[2], 0
