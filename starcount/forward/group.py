@@ -64,7 +64,7 @@ class GroupModel:
         """
         v, W = self.galaxy.vector(values), self.luminosity_matrix(factors)
         if not parts:
-            return self.projection.counts(v, W) + self.extra.sum(axis=0)
+            return self._counts(v, W) + self.extra.sum(axis=0)
         if parts != "class":
             return {**self._by_component(v, W), **dict(zip(self.extra_names, self.extra, strict=True))}
         found = {}
@@ -86,8 +86,12 @@ class GroupModel:
         found = {}
         for component in self.galaxy.components:
             mine = np.array([c is component for c, _ in self.galaxy.layers])[self.matrix.layer]
-            found[component.name] = self.projection.counts(v, W * mine[:, None])
+            found[component.name] = self._counts(v, W * mine[:, None])
         return found
+
+    def _counts(self, v: np.ndarray, W: np.ndarray) -> np.ndarray:
+        """Counts (field, bin), none below zero: beside many stars the splines leave some -1e-7 of them."""
+        return np.maximum(self.projection.counts(v, W), 0.0)
 
 
 def make_group_model(group: Group, galaxy: Galaxy, accuracy: float = ACCURACY, dust_range: float = 1.0) -> GroupModel:

@@ -36,7 +36,7 @@ class LuminosityMatrix:
 
     @cached_property
     def pieces(self) -> tuple[np.ndarray, ...]:
-        """The number of bins (1,), and ``row``, ``bin``, ``first`` and ``pieces`` as ``kernels.luminosity`` takes them."""
+        """The number of bins (1,), then ``row``, ``bin``, ``first`` and ``pieces`` as in ``kernels.luminosity``."""
         tables = [self.table_of(knot) for knot in range(KNOTS_MAG.size)]
         found, n_row, n_bin = [], 0, 0
         for slab in range(self.n_slab):

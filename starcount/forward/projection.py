@@ -38,10 +38,10 @@ class Projection:
 
     ``arrays``: index, scale, n_parameter, amplitude, anchor and the three addresses of ``LayerTable``; R0; then
     direction, first_line, first_node, d_kpc, volume, mu, A and node_weight of ``Lines``; the shape of the grid (slab,
-    temperature, y, layer); its first y, steps per mag and length, then those of the colour excess; the shifts (layer, 2)
-    between which a layer can put stars into the bins; E of ``Lines``; and the rows that the matrix has
-    (``kernels.products``). ``dust_range`` is the factor by which the extinction of a field may
-    be raised or lowered before stars are missed.
+    temperature, y, layer); its first y, steps per mag and length, then those of the colour excess; the shifts
+    (layer, 2) between which a layer can put stars into the bins; E of ``Lines``; and the rows that the matrix has
+    (``kernels.products``). ``dust_range`` is the factor by which the extinction of a field may be raised or lowered
+    before stars are missed.
     """
 
     lines: Lines

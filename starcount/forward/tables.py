@@ -95,6 +95,9 @@ class StarTables:
         return np.interp(middle, M_mag, M_V)
 
     def outside(self) -> np.ndarray:
-        """Return the table of the stars whose magnitudes rest on relations outside their verified range."""
-        systems = {stars.BANDS[name].system for name in (self.band, *(self.colour or ()))}
-        return self.of(weight=lambda locus, layer: 1.0 - np.all([locus.inside[name] for name in systems], axis=0))
+        """Return the table of the stars whose magnitudes rest on relations outside their verified range.
+
+        Those of the reference band rest on none: only the other bands count.
+        """
+        names = (self.band, *(self.colour or ()))
+        return self.of(weight=lambda locus, layer: 1.0 - locus.inside_of(*names))

@@ -18,6 +18,9 @@ from starcount.survey import overlapping_fields
 SURELY_STARS = 20.0
 """A field that should hold this many stars and holds none was not covered: chance would do that once in 10^8."""
 
+FEWEST = 1e-12
+"""Expected counts are at least this: beside many stars the splines of the projection may leave less than none."""
+
 CENSUS = "census"
 """The group of the local census; its rows scatter by Poisson noise."""
 
@@ -167,6 +170,7 @@ def _expected(name: str, group, v, factors, owner: np.ndarray | None, kernels: K
         W = Luminosity(kernels)(factors, *arrays)
     ln_dust = _data(f"{name}.ln_dust", np.zeros(group.counts.shape[0]))
     expected = ExpectedCounts(kernels, fixed_luminosity=factors is None)(v, W, ln_dust, *geometry)
+    expected = pt.maximum(expected, FEWEST)
     if len(group.extra):
         expected = expected + _data(f"{name}.extra", np.sum(group.extra, axis=0))
     return expected

@@ -15,7 +15,7 @@ from starcount.compilation import kernel
 def spline_weights(mu, A, factor, weight, grid_start, n_y):
     """For each node the first of the four rows of the grid it meets, their weights (4, node), and where it lies (0..1).
 
-    Nodes outside the grid get the weight zero. Rows are whole numbers in floating point: vector code has no other floor.
+    Nodes outside the grid get the weight zero. Rows are whole numbers in floating point, which vector code can floor.
     """
     n, y0, per_dy, top = mu.size, grid_start[0], grid_start[1], float(n_y - 3)
     row, w, part = np.empty(n), np.empty((4, n)), np.empty(n)

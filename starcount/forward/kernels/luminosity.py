@@ -1,8 +1,8 @@
 """The luminosity matrix as a sum over pieces: one for each knot of a smooth factor on the luminosity functions.
 
-The factor is linear between knots of absolute magnitude, so the matrix is linear in its values at the knots. Most of the
-matrix is zero, and a bin of magnitude meets few knots: what is not zero is kept in blocks, each a row's bins of one
-magnitude bin, with the pieces of the knots that matter side by side.
+The factor is linear between knots of absolute magnitude, so the matrix is linear in its values at the knots. Most of
+the matrix is zero, and a bin of magnitude meets few knots: what is not zero is kept in blocks, each a row's bins of
+one magnitude bin, with the pieces of the knots that matter side by side.
 """
 
 import numpy as np
