@@ -136,11 +136,12 @@ def test_factors_of_one_change_nothing(in_colour):
 
 
 def test_parts_sum_to_the_whole(in_colour):
-    """By component, and by component and class of stars; rounding."""
+    """By component, and by component and class: to rounding, and what the splines leave below none in a part."""
     whole = in_colour.expected()
-    assert_allclose(sum(in_colour.expected(parts=True).values()), whole, rtol=1e-10)
+    left = 1e-7 * whole.max()
+    assert_allclose(sum(in_colour.expected(parts=True).values()), whole, rtol=1e-10, atol=left)
     by_class = in_colour.expected(parts="class")
-    assert_allclose(sum(by_class.values()), whole, rtol=1e-9, atol=1e-12)
+    assert_allclose(sum(by_class.values()), whole, rtol=1e-9, atol=left)
     assert {name for _, name in by_class} == set(stars.CLASSES)
 
 

@@ -15,21 +15,25 @@ from starcount.stars.evolved import require_reference
 from starcount.stars.locus import Locus, scatter_mag
 
 METALLICITY = {
-    "census": (0.0, 0.2),
-    "thick disc": (-0.6, 0.3),
-    "halo": (-1.5, 0.5),
-    "bulge": (0.0, 0.4),
+    "census": (0.0, 0.2, 0.0),
+    "thick disc": (-0.6, 0.3, 5.0),
+    "halo": (-1.5, 0.5, 5.0),
+    "bulge": (0.0, 0.4, 8.0),
 }
-"""Mean and spread of [Fe/H], dex: conventions, from memory. The spread is taken as Gaussian."""
+"""Mean and spread of [Fe/H] in dex and age in Gyr of the youngest giants' tracks: conventions, from memory. The spread
+is taken as Gaussian; the tracks carry weights of constant star formation."""
 
-NODES = 7
+NODES, RED_GIANT_NODES = 7, 21
+"""Metallicities of a population; more where a tenth of a dex moves a star at the tip of the branch by tenths of a
+magnitude, lest every metallicity draw a line of its own."""
 
 _COLOURS_HOLD_MAG = 0.5
 """Stars this much brighter or fainter than a track, for their age, have its colours."""
 
-_NEAR_DEX = 0.3
-"""A star counts as inside when a track inside is this near: colours then differ by less than their scatter. It is the
-greatest distance from the nearer of two tracks half a dex apart, and a little."""
+VERIFIED_MAG = 0.105
+"""The one rule of what counts as inside the verified range: the magnitudes of a system, and the colours between its
+bands, are known to 0.1 mag (to the two decimals of the tables' errors), and no relation behind them is used outside the
+range its source gives. The errors are stated star by star in the tables, with what they rest on."""
 
 _LEAST_SHARE = 1e-4
 """Kinds of stars rarer than this in their cell are left out."""
@@ -40,50 +44,60 @@ def named_locus(name: str, reference: str) -> Locus:
     """Return the locus of one of our populations, or of the census, in a reference band."""
     if name not in METALLICITY:
         raise UnknownName("population with a locus", name, tuple(METALLICITY))
-    return locus_of(*METALLICITY[name], reference)
+    mean_dex, spread_dex, youngest_Gyr = METALLICITY[name]
+    return locus_of(mean_dex, spread_dex, reference, youngest_Gyr)
 
 
 @cache
-def locus_of(mean_dex: float, spread_dex: float, reference: str) -> Locus:
-    """Return the locus of a population whose [Fe/H] is Gaussian.
+def locus_of(mean_dex: float, spread_dex: float, reference: str, youngest_Gyr: float = 5.0) -> Locus:
+    """Return the locus of a population whose [Fe/H] is Gaussian and whose giants are not younger than some age.
 
-    Seven metallicities of equal weight with that mean and spread, clipped to the tracks'; between two tracks stars are
+    Metallicities of equal weight with that mean and spread, clipped to the tracks'; between two tracks stars are
     interpolated linearly. Of evolved stars at one magnitude the metallicities hold what their tracks put there: at the
     brightest magnitudes only those whose branch reaches so far. Cells that no track reaches take the nearest that one
     does, with its colours; further than half a magnitude away they are not inside.
     """
     require_reference(reference)
-    inputs = ("locus", mean_dex, spread_dex, reference)
-    return Locus.from_arrays(kept(inputs, lambda: _build(mean_dex, spread_dex, reference).arrays()))
+    inputs = ("locus", mean_dex, spread_dex, reference, youngest_Gyr)
+    return Locus.from_arrays(kept(inputs, lambda: _build(*inputs[1:]).arrays()))
 
 
-def _build(mean_dex: float, spread_dex: float, reference: str) -> Locus:
-    z = ndtri((np.arange(NODES) + 0.5) / NODES)
-    feh = mean_dex + spread_dex * z / np.sqrt((z**2).mean())
+def _build(mean_dex: float, spread_dex: float, reference: str, youngest_Gyr: float) -> Locus:
+    feh = _metallicities(mean_dex, spread_dex, NODES)
     pieces = [_points("white dwarf", [tracks.sequence("white_dwarfs", None, reference)], reference)]
     dwarfs = [_between("dwarfs", f, lambda at: tracks.sequence("dwarfs", at, reference)) for f in feh]
     pieces.append(_points("dwarf", dwarfs, reference))
     for name in EVOLVED_CLASSES:
-        found = [_between("evolved", f, lambda at, name=name: tracks.branch(name, at, reference)) for f in feh]
+        feh = _metallicities(mean_dex, spread_dex, RED_GIANT_NODES if name == "red giant" else NODES)
+        found = [
+            _between("evolved", f, lambda at, name=name: tracks.branch(name, at, youngest_Gyr, reference)) for f in feh
+        ]
         pieces.append(_points(name, found, reference))
     pieces = [piece for piece in pieces if piece is not None]
     return Locus.from_arrays({key: np.concatenate([piece[key] for piece in pieces]) for key in pieces[0]})
 
 
+def _metallicities(mean_dex: float, spread_dex: float, n: int) -> np.ndarray:
+    """Return [Fe/H] of ``n`` equal parts of a Gaussian with that mean and spread."""
+    z = ndtri((np.arange(n) + 0.5) / n)
+    return mean_dex + spread_dex * z / np.sqrt((z**2).mean())
+
+
 def _between(name: str, feh: float, track) -> tracks.Cells:
-    """Return the cells at a metallicity, linear between the two tracks around it (in the stars each holds)."""
+    """Return the cells at a metallicity, linear between the two tracks around it (in the stars each holds); so are
+    their errors."""
     grid = tracks.metallicities(name)
     feh = float(np.clip(feh, grid[0], grid[-1]))
     hi = max(int(np.searchsorted(grid, feh)), 1)
     t = (feh - grid[hi - 1]) / (grid[hi] - grid[hi - 1])
     pair = [(1 - t, track(float(grid[hi - 1]))), (t, track(float(grid[hi])))]
     stars = sum(weight * cells.stars for weight, cells in pair)
-    look, inside = np.zeros_like(pair[0][1].look), np.zeros_like(pair[0][1].inside)
+    look, error = np.zeros_like(pair[0][1].look), np.zeros_like(pair[0][1].error_mag)
     for weight, cells in pair:
         part = np.divide(weight * cells.stars, stars, out=np.zeros_like(stars), where=stars > 0)
         look += np.where(part > 0, part * cells.look, 0.0)
-        inside |= cells.inside & (part > 0) & (abs(feh - cells.feh) <= _NEAR_DEX)
-    return tracks.Cells(feh, stars, look, inside)
+        error += np.where(part > 0, part * cells.error_mag, 0.0)
+    return tracks.Cells(feh, stars, look, error)
 
 
 def _points(star_class: str, nodes: list[tracks.Cells], reference: str) -> dict[str, np.ndarray] | None:
@@ -99,7 +113,7 @@ def _points(star_class: str, nodes: list[tracks.Cells], reference: str) -> dict[
     share /= share.sum(axis=0)
     node, cell = np.nonzero(share)
     look = np.array([cells.look for cells in nodes])[node, :, :, nearest[cell]]  # (point, quantity, kind)
-    inside = np.array([cells.inside for cells in nodes])[node, :, :, nearest[cell]]
+    inside = np.array([cells.error_mag for cells in nodes])[node, :, :, nearest[cell]] <= VERIFIED_MAG
     inside &= (np.abs(nearest[cell] - cell) * CELL_MAG <= _COLOURS_HOLD_MAG)[:, None, None]
     return _named(star_class, cell, share[node, cell], look, inside)
 
@@ -113,7 +127,7 @@ def _named(star_class: str, cell, share, look: np.ndarray, inside: np.ndarray) -
         "cell": cell,
         "share": np.repeat(share, n_kind) / n_kind,
         "Teff_K": np.exp(Teff),
-        "scatter_mag": scatter_mag(star_class, M_MIDDLE_MAG[cell]),
+        "scatter_mag": scatter_mag(star_class, M_MIDDLE_MAG[cell], np.exp(Teff)),
     }
     points |= {f"M_mag/{b}": M_MIDDLE_MAG[cell] + d for b, d in zip(BANDS, differences, strict=True)}
     ranges = np.moveaxis(inside, 1, 0).reshape(len(tracks.ranges()), -1)

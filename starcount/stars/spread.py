@@ -6,7 +6,6 @@ import numpy as np
 
 from starcount.compilation import kernel
 from starcount.errors import InputError
-from starcount.stars.bands import BANDS
 from starcount.stars.cells import C_EDGES_MAG, CELL_MAG, CLASSES, M_MIDDLE_MAG
 from starcount.stars.locus import Locus
 
@@ -57,13 +56,10 @@ def spread(
 def outside_share(locus: Locus, lf_ref: np.ndarray, name: str) -> float:
     """Return the share of the stars of a function (..., class, cell) that rest on relations outside their range.
 
-    ``name`` is a system, or a band: its system's range and its own.
+    ``name`` is a system or a band; the band of the cells rests on none.
     """
     stars = np.asarray(lf_ref).reshape(-1, *np.shape(lf_ref)[-2:]).sum(axis=0)
-    inside = locus.inside[BANDS[name].system if name in BANDS else name]
-    if name in BANDS and name in locus.inside:
-        inside = inside & locus.inside[name]
-    outside = stars[locus.class_index, locus.cell] @ (locus.share * ~inside)
+    outside = stars[locus.class_index, locus.cell] @ (locus.share * ~locus.inside_of(name))
     return float(outside / stars.sum()) if stars.any() else 0.0
 
 

@@ -1,7 +1,7 @@
 """The tracks behind the loci: what stars of one metallicity look like at a reference magnitude.
 
 Everything here has the axes (quantity, ...): the first quantity is ln Teff, the others are the magnitudes of all bands
-relative to the reference band. ``inside`` has (range, ...), see ``ranges``.
+relative to the reference band. Errors have (range, ...), see ``ranges``.
 """
 
 from dataclasses import dataclass
@@ -27,19 +27,23 @@ _JUMP_MAG = 0.5
 
 _STEP_MAG = 0.02
 
+_ERROR = "error "
+"""What the names of columns of errors begin with."""
+
 
 @dataclass(frozen=True, eq=False)
 class Cells:
     """What the stars of one class and metallicity are in every cell of reference magnitude.
 
-    ``stars`` (cell,) is proportional to their number, ``look`` (quantity, kind, cell), ``inside`` (range, kind, cell).
+    ``stars`` (cell,) is proportional to their number, ``look`` (quantity, kind, cell); ``error_mag`` (range, kind,
+    cell) is what the magnitudes of a range may be off by, nan where a relation would be used outside its own range.
     The kinds of a cell hold equal shares.
     """
 
     feh: float
     stars: np.ndarray
     look: np.ndarray
-    inside: np.ndarray
+    error_mag: np.ndarray
 
 
 @cache
@@ -49,8 +53,8 @@ def table(name: str) -> Table:
 
 
 def ranges() -> tuple[str, ...]:
-    """Return what the tables keep verified ranges of: every system, and single bands with a range of their own."""
-    return tuple(name.removeprefix("in ") for name in table("dwarfs").colnames if name.startswith("in "))
+    """Return what the tables state errors of: every system, and single bands with errors of their own."""
+    return tuple(name.removeprefix(_ERROR) for name in table("dwarfs").colnames if name.startswith(_ERROR))
 
 
 def metallicities(name: str) -> np.ndarray:
@@ -62,42 +66,43 @@ def metallicities(name: str) -> np.ndarray:
 def sequence(name: str, feh: float | None, reference: str) -> Cells:
     """Return a track that passes every magnitude once: dwarfs of a metallicity, or white dwarfs (None).
 
-    Beyond its ends the stars keep the colours of the end and are not inside.
+    Beyond its ends the stars keep the colours of the end, with no known error.
     """
     rows = table(name) if feh is None else table(name)[np.asarray(table(name)["feh"]) == feh]
     rows = rows[np.argsort(rows[reference])]
-    at, look, inside = np.asarray(rows[reference], float), _look(rows, reference), _inside(rows)
+    at, look, error = np.asarray(rows[reference], float), _look(rows, reference), _error(rows)
     reached = (at[0] <= M_MIDDLE_MAG) & (at[-1] >= M_MIDDLE_MAG)
     return Cells(
         feh=np.nan if feh is None else feh,
         stars=np.ones(M_MIDDLE_MAG.size),
         look=np.array([np.interp(M_MIDDLE_MAG, at, q) for q in look])[:, None],
-        inside=np.array([np.interp(M_MIDDLE_MAG, at, s) > 1 - 1e-9 for s in inside])[:, None] & reached,
+        error_mag=np.array([np.where(reached, np.interp(M_MIDDLE_MAG, at, e), np.nan) for e in error])[:, None],
     )
 
 
 @cache
-def branch(star_class: str, feh: float, reference: str) -> Cells:
-    """Return the evolved stars of a class and metallicity: weighted points of a track, smoothed in magnitude."""
+def branch(star_class: str, feh: float, youngest_Gyr: float, reference: str) -> Cells:
+    """Return the evolved stars of a class, metallicity and least age: weighted points of tracks, smoothed in M."""
     rows = table("evolved")
-    rows = rows[(np.asarray(rows["class"]) == star_class) & (np.asarray(rows["feh"]) == feh)]
+    old = np.asarray(rows["age_Gyr"]) >= youngest_Gyr
+    rows = rows[old & (np.asarray(rows["class"]) == star_class) & (np.asarray(rows["feh"]) == feh)]
     n_quantity = 1 + len(BANDS)
     stars = np.zeros(M_MIDDLE_MAG.size)
     look = np.full((n_quantity, KINDS, stars.size), np.nan)
-    inside = np.zeros((len(ranges()), KINDS, stars.size), bool)
+    error = np.full((len(ranges()), KINDS, stars.size), np.nan)
     if len(rows):
-        weight, at, points, within = _fine(rows, reference)
+        weight, at, points, errors = _fine(rows, reference)
         for j, middle in enumerate(M_MIDDLE_MAG):
             near = np.flatnonzero(np.abs(at - middle) < 3 * SMOOTHING_MAG)
             if near.size:
                 w = weight[near] * np.exp(-0.5 * ((at[near] - middle) / SMOOTHING_MAG) ** 2)
                 stars[j] = w.sum()
-                look[:, :, j], inside[:, :, j] = _kinds(w, points[:, near], within[:, near])
-    return Cells(feh, stars, look, inside)
+                look[:, :, j], error[:, :, j] = _kinds(w, points[:, near], errors[:, near])
+    return Cells(feh, stars, look, error)
 
 
-def _kinds(weight: np.ndarray, look: np.ndarray, inside: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    """Cut points into groups of equal weight by temperature; return their means (quantity, kind) and (range, kind)."""
+def _kinds(weight: np.ndarray, look: np.ndarray, error: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """Cut points into groups of equal weight by temperature; return means (quantity, kind) and errors (range, kind)."""
     order = np.argsort(look[0])
     ends = np.cumsum(weight[order]) / weight.sum()
     begins = ends - weight[order] / weight.sum()
@@ -107,11 +112,11 @@ def _kinds(weight: np.ndarray, look: np.ndarray, inside: np.ndarray) -> tuple[np
     overlap /= overlap.sum(axis=1, keepdims=True)
     held = overlap > 1e-12
     means = np.array([[q[order][h] @ o[h] for o, h in zip(overlap, held, strict=True)] for q in look])
-    return means, np.array([[s[order][h].all() for h in held] for s in inside])
+    return means, np.array([[e[order][h].max() for h in held] for e in error])
 
 
 def _fine(rows: Table, reference: str):
-    """Return weight (point,), reference magnitude, look and inside of a track cut into steps of 0.02 mag.
+    """Return weight (point,), reference magnitude, look and errors of a track cut into steps of 0.02 mag.
 
     The rows of a track follow its evolution.
     """
@@ -130,12 +135,12 @@ def _fine(rows: Table, reference: str):
             first, along, stars = [*first, i], [*along, 0.0], [*stars, weight[i]]
     first, along = np.array(first), np.array(along)
     then = np.where(along > 0, first + 1, first)
-    look, inside = _look(rows, reference), _inside(rows)
+    look, error = _look(rows, reference), _error(rows)
     return (
         np.array(stars),
         M[first] * (1 - along) + M[then] * along,
         look[:, first] * (1 - along) + look[:, then] * along,
-        inside[:, first] & inside[:, then],
+        np.maximum(error[:, first], error[:, then]),
     )
 
 
@@ -146,8 +151,6 @@ def _look(rows: Table, reference: str) -> np.ndarray:
     return np.vstack([np.log(rows["Teff"]), *[np.asarray(column, float) - rows[reference] for column in columns]])
 
 
-def _inside(rows: Table) -> np.ndarray:
-    """Return (range, row); a table without a column rests on relations used inside that range."""
-    every = np.ones(len(rows), bool)
-    names = [f"in {name}" for name in ranges()]
-    return np.array([np.asarray(rows[name], bool) if name in rows.colnames else every for name in names])
+def _error(rows: Table) -> np.ndarray:
+    """Return (range, row), mag."""
+    return np.array([np.asarray(rows[_ERROR + name], float) for name in ranges()])
