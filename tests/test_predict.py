@@ -9,7 +9,6 @@ import pytest
 from numpy.testing import assert_allclose
 from scipy import stats
 
-from starcount.errors import InputError
 from starcount.predict import counts, draw_counts, predict_counts
 from starcount.tails import tail_probability
 
@@ -254,41 +253,6 @@ def test_stars_outside_verified_ranges_are_a_caution_from_one_per_cent_on(survey
     assert "group all: 3.2 % of the expected stars" in cautions[0]
 
 
-def test_progress_is_told_before_each_group_is_laid_out(survey, model):
-    """Of two groups the second is laid out when the first is predicted, and its share is that of the groups done."""
-    told = []
-
-    def prepared():
-        for name in ("first", "second"):
-            told.append(name)
-            yield model.groups[0]
-
-    two = SimpleNamespace(
-        survey=replace(survey, groups=tuple(replace(survey.groups[0], name=name) for name in ("a", "b"))),
-        galaxy=model.galaxy,
-        prepared=prepared,
-    )
-    predict_counts(two, progress=lambda what, share: told.append((what, share)))
-    lines, doing = "laying out the sight lines of", "predicting"
-    expected = [(f"{lines} a", 0.0), "first", (f"{doing} a", 0.4), (f"{lines} b", 0.5), "second", (f"{doing} b", 0.9)]
-    assert told == expected
-
-
-@pytest.mark.parametrize(
-    ("values", "message"),
-    [
-        ({"thin.amplitud": 1.0}, "no parameter called 'thin.amplitud'; known: halo.amplitude_pc3, thin.amplitude"),
-        ({"thin.amplitude": -1.0}, "value of thin.amplitude: -1.0; expected a number from 0 to 10"),
-        ({"thin.amplitude": np.nan}, "value of thin.amplitude: nan"),
-        ({"thin.amplitude": "much"}, "value of thin.amplitude: 'much'"),
-    ],
-)
-def test_values_that_no_parameter_takes_are_refused(model, values, message):
-    """A misspelt name would otherwise change nothing, silently."""
-    with pytest.raises(InputError, match=message):
-        predict_counts(model, values=values)
-
-
 def test_predicted_intervals_cover_counts_drawn_from_the_model():
     """Counts drawn from one of the draws fall into their 95 % interval in 95 % of 480 bins; 4 sigma is 4 %."""
     survey = invented.survey(number=48, counts=None)
@@ -307,12 +271,6 @@ def test_draws_that_failed_their_checks_are_not_called_a_posterior(model):
     failed = predict_counts(model, posterior=invented.posterior(certified=False), draws=10)
     assert failed.source == "uncertified draws"
     assert predict_counts(model).source == "values"
-
-
-def test_values_and_a_posterior_together_are_refused(model):
-    """They would contradict each other."""
-    with pytest.raises(InputError, match="expected one of them"):
-        predict_counts(model, values={}, posterior=invented.posterior())
 
 
 def test_pulls_of_a_true_model_are_standard_normal():

@@ -158,14 +158,17 @@ class _Reader:
         if not isinstance(given, str) or (known is not None and given not in known):
             reason = f", left out ({self.absent[given]})" if isinstance(given, str) and given in self.absent else ""
             names = f"one of {', '.join(sorted(known))}" if known is not None else "a population's name"
-            self.wrong(where, f"{given!r}{reason}", f"{names}, or the path of a file .toml or .ecsv")
+            found = "missing" if given is None else repr(given)
+            self.wrong(where, f"{found}{reason}", f"{names}, or the path of a file .toml or .ecsv")
         return str(given)
 
     def scaled(self, where: str, name: str, layer: Layer, law: Mapping[str, LawParameter], parameters: dict) -> None:
         """Refuse ratios that take a parameter out of the law's own range."""
         for key, ratio in layer.ratios.items():
             value, p = parameters[f"{name}.{key}"].value, law[key]
-            if not p.lower <= ratio * value <= p.upper and math.isfinite(ratio * value):
+            if p.choices:
+                self.wrong(f"{where}.{key}", "a ratio of a choice", f"one of {', '.join(dict(p.choices))}, in settings")
+            elif not p.lower <= ratio * value <= p.upper and math.isfinite(ratio * value):
                 allowed = f"a product from {p.lower:g} to {p.upper:g}, as the law has it"
                 self.wrong(f"{where}.{key}", f"{ratio:g} times {value:g} is {ratio * value:g}", allowed)
 

@@ -102,7 +102,8 @@ def _predict(survey, galaxy, values: Mapping[str, float], run: str, classes: boo
 
     final = folder.run_path(run)
     model = ForwardModel(inputs.read_survey(survey), inputs.read_galaxy(galaxy))
-    prediction = predict_counts(model, values=values, classes=classes, progress=progress)
+    prediction = predict_counts(model, values=values, classes=classes, progress=stretch(progress, 0, 0.8))
+    progress("writing the tables", 0.8)
     options = {"galaxy": str(galaxy), "values": dict(values), "classes": classes}
     with folder.replaced(final) as part:
         given = inputs.keep_inputs(part, model.survey, survey, model.galaxy, galaxy)

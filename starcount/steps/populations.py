@@ -112,7 +112,10 @@ def _colour(locus: stars.Locus, lf: np.ndarray, band: str, colour: tuple[str, st
         return colour, None
     if locus.pairs:
         return next(iter(locus.pairs)), None
-    usual = COLOURS[stars.BANDS[band].system]
+    system = stars.BANDS[band].system
+    if system not in COLOURS:
+        return None, f"none is usual in the system {system}; choose one"
+    usual = COLOURS[system]
     held = lf[locus.class_index, locus.cell] * locus.share > 0
     if np.isfinite(locus.colour_mag(*usual)[held]).all():
         return usual, None
