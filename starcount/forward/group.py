@@ -101,7 +101,10 @@ def make_group_model(group: Group, galaxy: Galaxy, accuracy: float = ACCURACY, d
     """
     temperatures = dust.extinction_temperatures((group.band, *(group.colour or ())))
     tables = StarTables(galaxy, group.band, group.colour, temperatures)
-    reddening = coefficients(group.band, group.colour, temperatures)
+    try:
+        reddening = coefficients(group.band, group.colour, temperatures)
+    except InputError as problem:
+        raise InputError(f"group {group.name!r}: {problem}") from None
     reach = _layer_reach(group, tables)
     lines = _settled_lines(group, galaxy, tables, reddening, reach, accuracy, dust_range)
     y = _y_grid(group, tables, (lines.mu_mag.min(), (lines.mu_mag + dust_range * lines.A_mag).max()))

@@ -47,7 +47,7 @@ def coefficients(band: str, colour: tuple[str, str] | None, temperatures_K: np.n
         return Coefficients(in_band, None)
     blue, red = (dust.band_coefficients(name)[chosen] for name in colour)
     if (blue <= red).any():
-        raise InputError(f"colour {colour[0]} - {colour[1]}: dust makes it bluer; expected the bluer band first")
+        raise InputError(f"colour {list(colour)}: dust would make it bluer; expected the bluer band first")
     return Coefficients(in_band, blue - red)
 
 

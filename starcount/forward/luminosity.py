@@ -14,6 +14,7 @@ from pathlib import Path
 import numpy as np
 
 from starcount import stars
+from starcount.errors import InputError
 from starcount.galaxy import Galaxy
 from starcount.galaxy.component import Component
 
@@ -121,7 +122,10 @@ def _shares(component: Component) -> np.ndarray:
         replace(layer, classes=layer.classes or stars.CLASSES, M_mag=layer.M_mag or _EVERY_M_MAG)
         for layer in component.layers
     ]
-    return stars.layer_shares(layers)
+    try:
+        return stars.layer_shares(layers)
+    except InputError as problem:
+        raise InputError(f"component {component.name!r}: {problem}") from None
 
 
 def _rows(galaxy: Galaxy, component: Component) -> slice:

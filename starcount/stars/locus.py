@@ -13,7 +13,7 @@ _SCATTER_MAG = {
     "horizontal branch": 0.05,
     "white dwarf": 0.10,
 }
-_DWARFS_MAG = ((2.5, 4.5, 7.0, 9.0), (0.10, 0.05, 0.05, 0.10))
+_DWARFS_MAG = ((0.0, 1.0, 2.2, 3.0, 4.5, 7.0, 9.0), (0.10, 0.14, 0.14, 0.09, 0.05, 0.05, 0.10))
 """Dwarfs of A and F type brighten by a magnitude and more before they count as evolved, and rotate; those of M type
 differ in colour by more than their metallicity says."""
 

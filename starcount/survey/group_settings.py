@@ -83,6 +83,8 @@ def _of_colour(group: dict, place: Place, bands: Bands) -> list[Problem]:
 
 def _of_extra(group: dict, place: Place) -> list[Problem]:
     problems = []
+    if group.get("extra") and "colour" in group:
+        problems.append(place.problem("extra", f"{group['extra']} with a colour", "none: extra rows have no colours"))
     for extra in usable(group, "extra", TEXTS) or ():
         if extra not in EXTRA_TABLES and not is_path(extra):
             allowed = one_of(extra, EXTRA_TABLES) + " or the path of a table"
