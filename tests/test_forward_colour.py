@@ -9,10 +9,11 @@ from numpy.testing import assert_allclose
 from starcount import stars
 from starcount.dust import band_coefficients
 from starcount.errors import InputError
-from starcount.forward import ForwardModel
+from starcount.forward import ForwardModel, layer_functions
 from starcount.forward.kernels import stars_on_grid
 from starcount.galaxy import read_galaxy
 from starcount.survey import Completeness, Observation
+from starcount.survey.curves import ColourError
 
 EDGES, COLOURS = np.arange(14.0, 20.1, 1.0), np.array([-np.inf, 0.5, 1.0, 1.5, 2.5, np.inf])
 GAIA = ("BP", "RP")
@@ -170,9 +171,9 @@ def test_reddening_moves_stars_to_the_red(in_colour):
 
 
 def test_colours_that_cannot_be_predicted_are_refused(default, fields):
-    """Redder band first; extra rows, which have no colours."""
+    """A colour that dust does not redden; extra rows, which have no colours."""
     for said, more in (
-        ("expected the bluer band first", {"colour": ("RP", "BP")}),
+        ("dust does not redden this colour", {"colour": ("RP", "BP")}),
         ("extra rows have no colours", {"colour": GAIA, "extra": ("quasars",)}),
     ):
         model = ForwardModel(skies.survey(fields, EDGES, "G", edges_colour_mag=COLOURS, **more), default)
@@ -190,3 +191,45 @@ def test_resolved_pairs(default, fields):
     assert (plain < sharp[0]).all()
     assert (sharp[0] < sharp[1]).all()
     assert (sharp[1] < plain / 0.79).all()
+
+
+def test_errors_of_colour_behind_much_dust(default):
+    """Stars scattered back across the last edge from redder slabs: a grid as far as all dust goes gives the same."""
+    fields = skies.circles([0, 60], [1.5, -1.0], 0.2)
+    wide = ColourError(np.array([5.0, 25.0]), np.full(2, -0.3), np.full(2, 0.3))
+    counted = []
+    for last in (np.inf, 30.0):  # a finite edge beyond all stars makes the grid as long as the excess
+        edges = np.array([-np.inf, 0.6, 1.0, last])
+        survey = skies.survey(
+            fields, EDGES[:4], "G", colour=GAIA, edges_colour_mag=edges, observation=Observation(colour_error=wide)
+        )
+        counted.append(ForwardModel(survey, default).groups[0].expected().reshape(2, 3, 3))
+    assert_allclose(counted[0][..., :2], counted[1][..., :2], rtol=1e-4)
+
+
+def test_limits_of_layers_are_those_of_V(default):
+    """The layer of the brightest giants, cut in M_V, holds as many stars in G as in V: 25 %, coarse rows."""
+    row = [layer.name for _, layer in default.layers].index("bright evolved stars")
+    in_V, in_G = (layer_functions(default, band)[row].sum() for band in "VG")
+    assert_allclose(in_G, in_V, rtol=0.25)
+
+
+def test_one_window_in_both_bands():
+    """Systems with 4.5 < M_V < 8.5 of every population, counted along the locus in G, are one: rounding."""
+    for name in ("thick disc", "halo", "bulge"):
+        lf, locus = stars.population(name, "G"), stars.locus(name, "G")
+        inside = (locus.M_V_mag > 4.5) & (locus.M_V_mag < 8.5) & ~locus.of_class("white dwarf")
+        assert_allclose((lf[locus.class_index, locus.cell] * locus.share)[inside].sum(), 1.0, rtol=1e-9)
+
+
+def test_companions_belong_to_dwarfs(default, fields):
+    """A sharper survey counts no more giants and white dwarfs; rounding."""
+    plain, sharp = (
+        ForwardModel(skies.survey(fields, EDGES, "G", **more), default).groups[0].expected(parts="class")
+        for more in ({}, {"resolution_arcsec": 0.5})
+    )
+    for (component, name), counts in plain.items():
+        if name == "dwarf":
+            assert (sharp[component, name] >= counts).all()
+        else:
+            assert_allclose(sharp[component, name], counts, rtol=1e-12)

@@ -179,11 +179,11 @@ def test_giants_per_dwarf_of_old_populations(name):
 
 @pytest.mark.parametrize("name", stars.POPULATIONS)
 def test_populations_are_normalised_in_V_whatever_the_band(name):
-    """The window holds one star in V; G has the same stars: all and the evolved ones are as many in both, to 2 %."""
+    """The window holds one star in V; G has the same stars: all and the evolved ones are as many in both, to 4 %."""
     lf_V, lf_G = stars.population(name, "V"), stars.population(name, "G")
     assert_allclose(stars.window(lf_V), 1.0, rtol=1e-12)
-    assert_allclose(lf_G.sum(), lf_V.sum(), rtol=0.02)  # half-magnitude rows of one simulation each
-    assert_allclose(lf_G[EVOLVED].sum(), lf_V[EVOLVED].sum(), rtol=0.02)
+    assert_allclose(lf_G.sum(), lf_V.sum(), rtol=0.04)  # half-magnitude rows; windows along the locus
+    assert_allclose(lf_G[EVOLVED].sum(), lf_V[EVOLVED].sum(), rtol=0.04)
     assert lf_G[WHITE_DWARF].sum() == 0.0
 
 
@@ -348,7 +348,7 @@ def test_old_populations_hold_every_class_that_the_model_has(name, he, band):
     assert shares[other] == 0.0
     assert min(shares[k] for k in ("dwarf", "subgiant", "red giant")) > 0
     model = {"thick disc": 6.6e-4 / 0.188, "halo": 6.3e-4 / 0.218, "bulge": 6.6e-4 / 0.165}[name]
-    assert_allclose(lf[stars.CLASSES.index(he)].sum(), model / 0.87, rtol=0.03)  # two digits; 0.87 to 0.88
+    assert_allclose(lf[stars.CLASSES.index(he)].sum(), model / 0.87, rtol=0.05)  # two digits; 0.87 to 0.88; the window in G
 
 
 def test_tables_of_stars_become_systems(tmp_path):

@@ -100,7 +100,7 @@ def make_group_model(group: Group, galaxy: Galaxy, accuracy: float = ACCURACY, d
     Raises ``UnknownName`` for its bands, dust or extra rows, ``InputError`` for a colour that cannot be predicted.
     """
     temperatures = dust.extinction_temperatures((group.band, *(group.colour or ())))
-    tables = StarTables(galaxy, group.band, group.colour, temperatures)
+    tables = StarTables(galaxy, group.band, group.colour, temperatures, group.resolution_arcsec is not None)
     try:
         reddening = coefficients(group.band, group.colour, temperatures)
     except InputError as problem:
@@ -146,7 +146,7 @@ def _settled_lines(
 ) -> Lines:
     """The sight lines, settled for counts in magnitude only: colours follow from the same nodes."""
     y = _y_grid(group, tables, (MU_FIRST_MAG, _LAST_Y_MAG))
-    response = make_response(group, y, None)
+    response = make_response(group, y, None)  # pairs change no node
     W = response.slab(tables.whole.sum(axis=3, keepdims=True), 0)
     v, layers, grid = galaxy.vector(), galaxy.layer_table(), Grid(y, np.zeros(1))
 
@@ -168,11 +168,12 @@ def _excess_grid(group: Group, tables: StarTables, lines: Lines, dust_range: flo
     if group.colour is None:
         return None
     bluest = stars.C_EDGES_MAG[np.flatnonzero(tables.whole.any(axis=(0, 1, 2)))[0]]
-    return excess_grid(dust_range * lines.E_mag.max(), group.edges_colour_mag, bluest)
+    reach = group.observation.colour_reach_mag
+    return excess_grid(dust_range * lines.E_mag.max(), group.edges_colour_mag, bluest, reach)
 
 
 def _gain(group: Group, tables: StarTables, y_mag: np.ndarray) -> np.ndarray | None:
-    """How many objects a system of each cell counts as (y, cell), where the survey resolves the wider ones.
+    """How many objects beyond one a system of each cell counts as (y, cell), where the survey resolves the wider ones.
 
     The distance is that of a star without extinction, so that it is a function of the shift: behind A = 1 mag it is
     1.6 times too large, which changes the share of resolved pairs by a few per cent.
@@ -180,7 +181,8 @@ def _gain(group: Group, tables: StarTables, y_mag: np.ndarray) -> np.ndarray | N
     if group.resolution_arcsec is None:
         return None
     M_V = tables.dwarfs_M_V()
-    return np.array([stars.resolved_gain(M_V, 10 ** (y / 5 + 1), group.resolution_arcsec) for y in y_mag])
+    gain = [stars.resolved_gain(M_V, 10 ** (y / 5 + 1), group.resolution_arcsec) for y in y_mag]
+    return np.array(gain) - 1.0
 
 
 def _layer_reach(group: Group, tables: StarTables) -> np.ndarray:

@@ -47,7 +47,8 @@ def coefficients(band: str, colour: tuple[str, str] | None, temperatures_K: np.n
         return Coefficients(in_band, None)
     blue, red = (dust.band_coefficients(name)[chosen] for name in colour)
     if (blue <= red).any():
-        raise InputError(f"colour {list(colour)}: dust would make it bluer; expected the bluer band first")
+        allowed = "two bands of which it dims the first more, whatever the star's temperature"
+        raise InputError(f"colour {list(colour)}: dust does not redden this colour; expected {allowed}")
     return Coefficients(in_band, blue - red)
 
 

@@ -73,7 +73,7 @@ def layer_functions(galaxy: Galaxy, band: str) -> np.ndarray:
             here = _from_census(galaxy, component, band)
             lf[rows] = here / stars.window(_from_census(galaxy, component, _REFERENCE_BAND).sum(axis=0))
         else:
-            lf[rows] = _shares(component) * _population(component, band)
+            lf[rows] = _shares(component, band) * _population(component, band)
     return lf
 
 
@@ -83,12 +83,12 @@ def _from_census(galaxy: Galaxy, component: Component, band: str) -> np.ndarray:
     means = sphere_means(galaxy, census.radius_pc)
     amplitudes = galaxy.amplitudes(galaxy.values)
     others = [c for c in galaxy.components if c is not component and c.anchor == "sun"]
-    functions = [amplitudes[c.name] * _shares(c) * _population(c, band) for c in others]
+    functions = [amplitudes[c.name] * _shares(c, band) * _population(c, band) for c in others]
     other_means = [means[_rows(galaxy, c)] for c in others]
     shape = (0, *means.shape[1:])
     return stars.census_at_the_sun(
         census,
-        _shares(component),
+        _shares(component, band),
         means[_rows(galaxy, component)],
         np.concatenate(functions) if functions else np.zeros((0, len(stars.CLASSES), stars.M_EDGES_MAG.size - 1)),
         np.concatenate(other_means) if other_means else np.zeros(shape),
@@ -117,15 +117,35 @@ def _population(component: Component, band: str) -> np.ndarray:
     return stars.population(population_name(component), band)
 
 
-def _shares(component: Component) -> np.ndarray:
+def _shares(component: Component, band: str) -> np.ndarray:
+    """The share of each layer (layer, class, cell of the reference band) of the stars; limits of layers are in M_V."""
     layers = [
         replace(layer, classes=layer.classes or stars.CLASSES, M_mag=layer.M_mag or _EVERY_M_MAG)
         for layer in component.layers
     ]
     try:
-        return stars.layer_shares(layers)
+        shares = stars.layer_shares(layers)
     except InputError as problem:
         raise InputError(f"component {component.name!r}: {problem}") from None
+    if band == _REFERENCE_BAND or len(layers) == 1:
+        return shares
+    return _in_band(shares, stars.locus(population_name(component), band))
+
+
+def _in_band(shares: np.ndarray, locus: stars.Locus) -> np.ndarray:
+    """Shares (layer, class, cell) by absolute visual magnitude, brought to the cells of a locus' reference band.
+
+    A population that does not say where it is in V has its limits in its own band.
+    """
+    M_V = np.where(np.isfinite(locus.M_V_mag), locus.M_V_mag, locus.middle_mag)
+    at = np.clip(np.searchsorted(stars.M_EDGES_MAG, M_V, side="right") - 1, 0, shares.shape[2] - 1)
+    found, total = np.zeros_like(shares), np.zeros(shares.shape[1:])
+    place = locus.class_index, locus.cell
+    np.add.at(total, place, locus.share)
+    for row, by_V in enumerate(shares):
+        np.add.at(found[row], place, locus.share * by_V[locus.class_index, at])
+    return np.where(total > 0, found / np.where(total > 0, total, 1.0), shares)
+
 
 
 def _rows(galaxy: Galaxy, component: Component) -> slice:

@@ -12,9 +12,9 @@ import numpy as np
 from scipy.linalg import solveh_banded
 
 from starcount import stars
+from starcount.stars import CELL_MAG
 from starcount.survey import Group
 
-CELL_MAG = 0.05
 Y_STEP_MAG = 0.1
 _STEPS = round(Y_STEP_MAG / CELL_MAG)
 _MARGIN = 12
@@ -28,7 +28,7 @@ class Response:
     ``first_cell`` is the first true cell, counted from that of the brightest absolute magnitude at the first y, of
     which stars are counted; ``by_magnitude`` (true cell, node, magnitude bin); ``by_colour`` (slab, node, colour cell,
     colour bin) coefficients of a cubic B-spline along the slabs. The response in colour is linear in true magnitude
-    between the nodes. ``gain`` (y, cell) or None: how many objects a system counts as.
+    between the nodes. ``gain`` (y, cell) or None: how many objects a system of a dwarf counts as beyond one.
     """
 
     y_mag: np.ndarray
@@ -45,16 +45,23 @@ class Response:
     def slab(self, table: np.ndarray, slab: int, ranges: np.ndarray | None = None) -> np.ndarray:
         """Return the matrix (row, bin) of one slab for a table of stars (layer, temperature, cell, colour cell).
 
-        Rows are ordered by temperature, shift and layer; ``ranges`` (temperature, 2) are the shifts to be kept, all
+        With a gain the table is a pair (2, ...): all stars, and the dwarfs that may count as more than one. Rows are ordered by temperature, shift and layer; ``ranges`` (temperature, 2) are the shifts to be kept, all
         without.
         """
+        if self.gain is None:
+            return self._rows(table, slab, ranges, None)
+        every, dwarfs = table
+        return self._rows(every, slab, ranges, None) + self._rows(dwarfs, slab, ranges, self.gain)
+
+    def _rows(self, table: np.ndarray, slab: int, ranges: np.ndarray | None, gain: np.ndarray | None) -> np.ndarray:
         whole = (0, self.y_mag.size)
         found = [
-            self._shifts(table[:, x], slab, *(whole if ranges is None else ranges[x])) for x in range(table.shape[1])
+            self._shifts(table[:, x], slab, *(whole if ranges is None else ranges[x]), gain)
+            for x in range(table.shape[1])
         ]
         return np.concatenate([shifts.reshape(-1, self.n_bin) for shifts in found])
 
-    def _shifts(self, table: np.ndarray, slab: int, first: int, end: int) -> np.ndarray:
+    def _shifts(self, table: np.ndarray, slab: int, first: int, end: int, gain: np.ndarray | None) -> np.ndarray:
         """The matrix (y, layer, bin) of some shifts for a table (layer, cell, colour cell)."""
         found = np.zeros((end - first, len(table), self.n_bin))
         occupied = np.flatnonzero(table.any(axis=(0, 2)))
@@ -71,8 +78,8 @@ class Response:
             if hi <= lo:
                 continue
             taken = self.by_magnitude[lo - shift : hi - shift]
-            if self.gain is not None:
-                taken = taken * self.gain[i, lo:hi, None, None]
+            if gain is not None:
+                taken = taken * gain[i, lo:hi, None, None]
             counted = taken.reshape(-1, n_m).T @ folded[lo - c_lo : hi - c_lo].reshape((hi - lo) * n_node, -1)
             found[i - first] = counted.reshape(n_m, len(table), -1).transpose(1, 0, 2).reshape(len(table), -1)
         return found
@@ -116,14 +123,16 @@ def _spline_coefficients(excess_mag: np.ndarray, response) -> np.ndarray:
     return np.ascontiguousarray(solved[_MARGIN:-_MARGIN])
 
 
-def excess_grid(largest_mag: float, edges_colour_mag: np.ndarray, bluest_mag: float) -> np.ndarray:
+def excess_grid(
+    largest_mag: float, edges_colour_mag: np.ndarray, bluest_mag: float, reach_mag: float = 0.0
+) -> np.ndarray:
     """Return the colour excesses (slab,) of the grid, up to ``largest_mag`` or to where no star meets an edge any more.
 
-    They start so that the first finite edge of the bins meets edges of the colour cells.
+    ``bluest_mag`` is the bluest colour of a star, ``reach_mag`` how far from its colour it may be catalogued. They start so that the first finite edge of the bins meets edges of the colour cells.
     """
     finite = edges_colour_mag[np.isfinite(edges_colour_mag)]
     offset = 0.0 if not finite.size else (finite[0] - stars.C_EDGES_MAG[0]) % CELL_MAG
-    last = largest_mag if not finite.size else min(largest_mag, finite[-1] - bluest_mag)
+    last = largest_mag if not finite.size else min(largest_mag, finite[-1] - bluest_mag + reach_mag)
     first = offset - 3.0 * CELL_MAG
     n = int(np.ceil((max(last, 0.0) - first) / CELL_MAG)) + 4
     return first + CELL_MAG * np.arange(n)

@@ -24,13 +24,15 @@ class StarTables:
     """Tables (layer, temperature, cell, colour cell) of stars per star of the window of their component.
 
     ``colour`` is a pair of bands, or None for tables with one colour cell that holds every star; ``temperatures_K`` are
-    those between which stars are shared for their extinction.
+    those between which stars are shared for their extinction. With ``pairs`` every table comes twice, (2, ...): all
+    stars, and the dwarfs alone, whose companions a sharp survey may see.
     """
 
     galaxy: Galaxy
     band: str
     colour: tuple[str, str] | None
     temperatures_K: np.ndarray
+    pairs: bool = False
 
     @property
     def reference(self) -> str:
@@ -49,11 +51,17 @@ class StarTables:
 
     @cached_property
     def whole(self) -> np.ndarray:
-        """Every star."""
-        return self.of()
+        """Every star, once."""
+        return self._of(None, None)
 
     def of(self, classes: np.ndarray | None = None, weight: Weight | None = None) -> np.ndarray:
         """Return the table of the stars of some ``classes`` (class,), with a ``weight`` on the points of the loci."""
+        if not self.pairs:
+            return self._of(classes, weight)
+        dwarfs = np.arange(len(stars.CLASSES)) == stars.CLASSES.index("dwarf")
+        return np.stack([self._of(classes, weight), self._of(dwarfs if classes is None else dwarfs & classes, weight)])
+
+    def _of(self, classes: np.ndarray | None, weight: Weight | None) -> np.ndarray:
         lf = self.lf if classes is None else self.lf * classes[:, None]
         found = []
         for component in self.galaxy.components:
@@ -66,7 +74,7 @@ class StarTables:
     def at_knot(self, knot: int | None) -> np.ndarray:
         """Return the table of every star, or weighted by the hat function of a knot."""
         if knot is None:
-            return self.whole
+            return self.of() if self.pairs else self.whole
         return self.of(weight=lambda locus, layer: hat(locus.M_V_mag)[:, knot])
 
     def of_class(self, c: int, factors: np.ndarray | None) -> np.ndarray:

@@ -5,6 +5,7 @@ from pathlib import Path
 
 import numpy as np
 
+from starcount.constants import REFERENCE_WINDOW_MV_MAG
 from starcount.errors import UnknownName
 from starcount.stars.bands import require_band
 from starcount.stars.cells import CLASSES
@@ -24,8 +25,8 @@ POPULATIONS = {"thick disc": "thick_disc.ecsv", "halo": "halo.ecsv", "bulge": "b
 def population(name_or_path: str | Path, reference: str) -> np.ndarray:
     """Return the luminosity function (class, cell) of a population per system in the reference window 4.5 < M_V < 8.5.
 
-    The window is counted in the V rows of the same table whatever the band, so that fits in V and in G mean the same
-    density; functions of single stars are made functions of systems, window included. ``name_or_path`` is a name in
+    The window is counted in M_V whatever the band, so that fits in V and in G mean the same density: in V rows, or for
+    our own populations in G along their locus. Functions of single stars are made functions of systems, window included. ``name_or_path`` is a name in
     ``POPULATIONS`` or a file of the user's own (see ``own_tables``).
 
     Raises ``UnknownName`` for a population or band, ``Problems`` for the file.
@@ -33,7 +34,8 @@ def population(name_or_path: str | Path, reference: str) -> np.ndarray:
     require_band(reference)
     require_reference(reference)
     if name_or_path in POPULATIONS:
-        return our_table(name_or_path).per_star(reference)
+        lf = our_table(name_or_path).per_star(reference)
+        return lf if reference == "V" else lf / _window(lf, locus(name_or_path, reference))
     return _own(name_or_path).per_star(reference)
 
 
@@ -45,6 +47,13 @@ def locus(name_or_path: str | Path, reference: str) -> Locus:
     if name_or_path in METALLICITY:
         return named_locus(str(name_or_path), reference)
     return _own(name_or_path).locus(reference)
+
+
+def _window(lf: np.ndarray, locus: Locus) -> float:
+    """The systems of a function (class, cell) with 4.5 < M_V < 8.5, along its locus, without white dwarfs."""
+    low, high = REFERENCE_WINDOW_MV_MAG
+    inside = (locus.M_V_mag > low) & (locus.M_V_mag < high) & ~locus.of_class("white dwarf")
+    return float((lf[locus.class_index, locus.cell] * locus.share)[inside].sum())
 
 
 def our_table(name: str) -> FunctionTable:

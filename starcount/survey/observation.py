@@ -43,6 +43,14 @@ class Observation:
         """Whether the completeness depends on colour, and so belongs to the response in colour."""
         return self.completeness is not None and self.completeness.c_mag is not None
 
+    @property
+    def colour_reach_mag(self) -> float:
+        """How far from its true colour a star may be catalogued; inf where faint stars may be found at any colour."""
+        if self.faint_BP is not None:
+            return np.inf
+        table = self.colour_error
+        return 0.0 if table is None else REACH * float(table.scatter_mag.max()) + float(np.abs(table.offset_mag).max())
+
     def reach(self, edges_mag: np.ndarray) -> tuple[float, float]:
         """The brightest and faintest true magnitudes of which stars land in the bins."""
         bright, faint = float(edges_mag[0]), float(edges_mag[-1])
