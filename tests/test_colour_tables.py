@@ -2,6 +2,7 @@
 
 import itertools
 import logging
+from pathlib import Path
 from types import SimpleNamespace
 
 import numpy as np
@@ -245,6 +246,13 @@ def hipparcos():
     near = (columns[:, 0] > 5) & (columns[:, 1] < 0.1 * columns[:, 0])
     parallax, _, Hp, BV, VI = columns[near].T
     return parallax, Hp + 5 * np.log10(parallax / 100), BV, VI
+
+
+def test_constants_are_part_of_the_key_of_kept_tables(monkeypatch):
+    """The order of the classes is what a class's number means: another ``constants.py``, another key."""
+    read, before = Path.read_bytes, cache._our_bytes()
+    monkeypatch.setattr(Path, "read_bytes", lambda path: read(path) + b"#" * (path.name == "constants.py"))
+    assert cache._our_bytes() != before
 
 
 @pytest.mark.parametrize("M_Hp_mag", [3.5, 4.5, 5.5, 6.5])

@@ -134,7 +134,7 @@ def test_colours_lie_on_the_isochrone(tmp_path):
 
 def test_metallicities_spread_the_colour(tmp_path):
     """Half the stars at [Fe/H] -0.5 and half at +0.5 lie 0.2 mag apart: their mean stays, the spread is 0.1 mag."""
-    settings = {**ISOCHRONES, "metallicity": {"mean": 0.0, "spread": 0.0}}
+    settings = {**ISOCHRONES, "metallicity": {"mean": 0.0, "spread": 0.5}}
     own = read_own(write_own(tmp_path, settings, isochrone_rows(fehs=(-0.5, 0.5))))
     locus, lf = own.locus("G"), own.per_star("G")
     weight = locus.share * lf[locus.class_index, locus.cell]
@@ -263,14 +263,16 @@ def test_classes_from_gravity_where_there_is_no_phase(tmp_path):
 
 def test_core_helium_and_evolved_words(tmp_path):
     """One phase may be both clump and horizontal branch, by metallicity; one both subgiant and red giant, by log g."""
-    table = isochrone_rows(fehs=(-1.5, 0.0))
+    table = isochrone_rows(fehs=(-1.2, -0.7))
     table["log_g"] = np.where(table["initial_mass"] > 1.07, 2.0, 4.0)
     table["phase"][table["initial_mass"] < 0.98] = 3
-    settings = {**ISOCHRONES, "metallicity": {"mean": -0.3, "spread": 0.0}}
+    settings = {**ISOCHRONES, "metallicity": {"mean": -0.8, "spread": 0.0}}
     settings["phases"] = {"core helium": [3], "dwarf": [0], "evolved": [2]}
     lf = read_own(write_own(tmp_path, settings, table)).per_star("V").sum(axis=1)
     assert (lf[[ones(name) for name in ("dwarf", "subgiant", "red giant", "clump", "horizontal branch")]] > 0).all()
-    assert_allclose(lf[ones("clump")], 4 * lf[ones("horizontal branch")], rtol=1e-12)  # [Fe/H] 0 has 4/5 of the stars
+    assert_allclose(
+        lf[ones("clump")], 4 * lf[ones("horizontal branch")], rtol=1e-12
+    )  # [Fe/H] -0.7 has 4/5 of the stars
 
 
 def mist_rows(fehs, log_ages):

@@ -227,7 +227,7 @@ def test_a_bad_setting_of_a_function_is_one_line(tmp_path, change, message):
     [
         ({"band": "U"}, "own.toml: band: band 'U' is left out: "),
         ({"colour": ["SDSS g", "g"]}, "own.toml: colour: no band called 'g'; known: "),
-        ({"colour": ["SDSS g"]}, "own.toml: colour: ['SDSS g']; expected two bands, bluer first"),
+        ({"colour": ["SDSS g"]}, "own.toml: colour: ['SDSS g']; expected two different bands, bluer first"),
         ({"window": -1}, "own.toml: window: -1; expected more than 0 of the table's systems with 4.5 < M_V < 8.5"),
     ],
 )

@@ -21,13 +21,16 @@ class Band:
     """The band whose luminosity functions stand behind counts in this one: "V" or "G"."""
     description: str
     source: str
+    wavelength_nm: float
+    """Mean wavelength of the response, computed from the filter curves as the package speclite 1.0 has them: it says
+    which of two bands is the bluer one."""
 
 
-def _bands(system: str, magnitudes: str, reference: str, source: str, **descriptions: str) -> tuple[Band, ...]:
+def _bands(system: str, magnitudes: str, reference: str, source: str, **bands: tuple[float, str]) -> tuple[Band, ...]:
     prefix = f"{system} " if magnitudes == "AB" else ""
     return tuple(
-        Band(f"{prefix}{short}", system, magnitudes, reference, description, source)
-        for short, description in descriptions.items()
+        Band(f"{prefix}{short}", system, magnitudes, reference, description, source, wavelength_nm)
+        for short, (wavelength_nm, description) in bands.items()
     )
 
 
@@ -39,61 +42,61 @@ BANDS: dict[str, Band] = {
             "Vega",
             "G",
             "Riello et al. 2021, A&A 649, A3",
-            G="Gaia (E)DR3 G, white light",
-            BP="Gaia (E)DR3 blue photometer, 330-680 nm",
-            RP="Gaia (E)DR3 red photometer, 640-1050 nm",
+            G=(625.1, "Gaia (E)DR3 G, white light"),
+            BP=(521.4, "Gaia (E)DR3 blue photometer, 330-680 nm"),
+            RP=(769.8, "Gaia (E)DR3 red photometer, 640-1050 nm"),
         ),
         *_bands(
             "Johnson-Cousins",
             "Vega",
             "V",
             "Bessell 1990, PASP 102, 1181",
-            B="Johnson B",
-            V="Johnson V",
-            I="Cousins I",
+            B=(443.2, "Johnson B"),
+            V=(550.7, "Johnson V"),
+            I=(802.7, "Cousins I"),
         ),
         *_bands(
             "SDSS",
             "AB",
             "G",
             "Fukugita et al. 1996, AJ 111, 1748",
-            u="Sloan u, 355 nm",
-            g="Sloan g, 472 nm",
-            r="Sloan r, 617 nm",
-            i="Sloan i, 748 nm",
-            z="Sloan z, 892 nm",
+            u=(361.8, "Sloan u, 355 nm"),
+            g=(473.3, "Sloan g, 472 nm"),
+            r=(617.7, "Sloan r, 617 nm"),
+            i=(748.6, "Sloan i, 748 nm"),
+            z=(887.8, "Sloan z, 892 nm"),
         ),
         *_bands(
             "PS1",
             "AB",
             "G",
             "Tonry et al. 2012, ApJ 750, 99",
-            g="Pan-STARRS1 g, 488 nm",
-            r="Pan-STARRS1 r, 620 nm",
-            i="Pan-STARRS1 i, 752 nm",
-            z="Pan-STARRS1 z, 866 nm",
-            y="Pan-STARRS1 y, 962 nm",
+            g=(487.9, "Pan-STARRS1 g, 488 nm"),
+            r=(620.0, "Pan-STARRS1 r, 620 nm"),
+            i=(752.4, "Pan-STARRS1 i, 752 nm"),
+            z=(866.5, "Pan-STARRS1 z, 866 nm"),
+            y=(961.6, "Pan-STARRS1 y, 962 nm"),
         ),
         *_bands(
             "LSST",
             "AB",
             "G",
             "Rubin Observatory technical note RTN-099 (the filters as in its commissioning camera)",
-            u="Rubin LSST u, 374 nm",
-            g="Rubin LSST g, 482 nm",
-            r="Rubin LSST r, 621 nm",
-            i="Rubin LSST i, 754 nm",
-            z="Rubin LSST z, 866 nm",
-            y="Rubin LSST y, 973 nm",
+            u=(373.5, "Rubin LSST u, 374 nm"),
+            g=(482.2, "Rubin LSST g, 482 nm"),
+            r=(620.6, "Rubin LSST r, 621 nm"),
+            i=(753.7, "Rubin LSST i, 754 nm"),
+            z=(866.4, "Rubin LSST z, 866 nm"),
+            y=(973.2, "Rubin LSST y, 973 nm"),
         ),
         *_bands(
             "2MASS",
             "Vega",
             "G",
             "Skrutskie et al. 2006, AJ 131, 1163",
-            J="2MASS J, 1.24 micron",
-            H="2MASS H, 1.65 micron",
-            Ks="2MASS Ks, 2.16 micron",
+            J=(1230.4, "2MASS J, 1.24 micron"),
+            H=(1639.2, "2MASS H, 1.65 micron"),
+            Ks=(2153.3, "2MASS Ks, 2.16 micron"),
         ),
     )
 }
@@ -116,3 +119,8 @@ def require_band(name: str) -> None:
         raise InputError(f"band {name!r} is left out: {ABSENT[name]}")
     if name not in BANDS:
         raise UnknownName("band", name, tuple(BANDS))
+
+
+def bluer_first(blue: str, red: str) -> bool:
+    """Whether two of ``BANDS`` make a colour as written here: two different ones, the bluer first."""
+    return BANDS[blue].wavelength_nm < BANDS[red].wavelength_nm

@@ -10,6 +10,7 @@ from pathlib import Path
 import numpy as np
 import platformdirs
 
+from starcount import constants
 from starcount.errors import InputError
 from starcount.files import replacing
 
@@ -19,9 +20,9 @@ log = logging.getLogger(__name__)
 def kept(inputs: tuple, make: Callable[[], dict[str, np.ndarray]]) -> dict[str, np.ndarray]:
     """Return the arrays that ``make`` returns, read from disk where they were made before from the same inputs.
 
-    The key is a digest of ``inputs`` (bytes, or anything whose ``repr`` tells it apart), of our tables and of our own
-    code, so a changed table or line never returns old numbers. A file that cannot be read is made again, a folder that
-    cannot be written is done without; the log says so.
+    The key is a digest of ``inputs`` (bytes, or anything whose ``repr`` tells it apart), of our tables, of our own
+    code and of the constants (the order of the classes), so a changed table or line never returns old numbers. A file
+    that cannot be read is made again, a folder that cannot be written is done without; the log says so.
     """
     path = _folder() / f"{_digest(inputs)}.npz"
     if path.is_file():
@@ -53,7 +54,7 @@ def _digest(inputs: tuple) -> str:
 
 
 def _our_bytes() -> bytes:
-    found = hashlib.sha256()
+    found = hashlib.sha256(Path(constants.__file__).read_bytes())
     for folder in (files(__package__), files(__package__) / "data"):
         for path in sorted(p for p in Path(str(folder)).iterdir() if p.suffix in {".py", ".ecsv"}):
             found.update(path.read_bytes())

@@ -1,5 +1,6 @@
 """Reading the columns of ECSV tables, saying everything that is wrong with them at once."""
 
+from collections.abc import Sequence
 from pathlib import Path
 
 import numpy as np
@@ -7,6 +8,9 @@ from astropy import units as u
 from astropy.table import MaskedColumn, Table
 
 from starcount.errors import Problem, Problems
+
+SHOWN_ROWS = 10
+"""Rows named for one kind of mistake; the others are counted."""
 
 
 def read_ecsv(path: str | Path) -> Table:
@@ -49,5 +53,22 @@ def numbers(table: Table, name: str, unit: str, file: str, problems: list[Proble
     values = np.asarray(plain, float) * factor
     values[np.ma.getmaskarray(np.ma.asarray(column))] = np.nan
     wrong = np.flatnonzero(~np.isfinite(values))
-    problems.extend(Problem(file, f"row {row + 1}, {name}", str(column[row]), wanted) for row in wrong)
+    problems.extend(row_problems(file, name, wrong, [str(column[row]) for row in wrong], wanted))
     return values
+
+
+def row_problems(
+    file: str, column: str, rows: Sequence[int], found: Sequence[object], allowed: str | Sequence[str]
+) -> list[Problem]:
+    """Return one problem for each of the first bad rows (by index from 0), and one that counts the others.
+
+    ``found`` holds what stands in each of ``rows``; ``allowed`` is one text for all of them, or one for each.
+    """
+    texts = [allowed] * len(rows) if isinstance(allowed, str) else allowed
+    problems = [
+        Problem(file, f"row {row + 1}, {column}", value if isinstance(value, str) else f"{value:g}", text)
+        for row, value, text in list(zip(rows, found, texts, strict=True))[:SHOWN_ROWS]
+    ]
+    if len(rows) > SHOWN_ROWS:
+        problems.append(Problem(file, column, f"the same in {len(rows) - SHOWN_ROWS} more rows", "as above"))
+    return problems

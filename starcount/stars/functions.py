@@ -10,8 +10,8 @@ from starcount.constants import CLASS_WORDS, EVOLVED_CLASSES, REFERENCE_WINDOW_M
 from starcount.errors import Problem, Problems
 from starcount.stars.bands import BANDS
 from starcount.stars.binaries import system_factor
-from starcount.stars.cells import CLASSES, M_EDGES_MAG, M_MIDDLE_MAG, members, to_cells, window
-from starcount.stars.ecsv import numbers, words
+from starcount.stars.cells import CLASSES, EVOLVED, M_EDGES_MAG, M_MIDDLE_MAG, members, to_cells, window
+from starcount.stars.ecsv import numbers, row_problems, words
 from starcount.stars.evolved import REFERENCES, evolved_split
 from starcount.stars.tracks import sequence
 
@@ -40,11 +40,12 @@ class FunctionTable:
 
     def _function(self, reference: str) -> np.ndarray:
         lf = np.zeros((len(CLASSES), M_MIDDLE_MAG.size))
+        split = evolved_split(reference)[list(EVOLVED)]
         for word in CLASS_WORDS:
             k = _ordered(self.band, self.star_class, self.M_lo, (reference, word))
             if k.size:
                 cells = to_cells(np.append(self.M_lo[k], self.M_hi[k[-1]]), self.stars[k])
-                lf[list(members(word))] += cells * (evolved_split(reference)[1:5] if word == "evolved" else 1.0)
+                lf[list(members(word))] += cells * (split if word == "evolved" else 1.0)
         return lf * _systems(reference) if self.counts == "stars" else lf
 
     def _window(self) -> float:
@@ -65,8 +66,10 @@ def function_table(table: Table, file: str) -> FunctionTable:
     Columns: ``M_lo``, ``M_hi`` (mag), ``class`` (one of ``CLASS_WORDS``) and either ``phi`` (stars per mag, any common
     scale) or ``n`` (stars), and ``band`` as a column or a meta key. Meta keys: ``counts``, "systems" unless it says
     "stars"; ``window``, needed without V rows: the table's systems with 4.5 < M_V < 8.5, on the scale of ``phi`` x mag
-    or ``n``. Rows of a class may not overlap or leave gaps; write empty rows as 0.
+    or ``n``. Rows of a class may not overlap or leave gaps; write empty rows as 0. Every band must hold stars.
     """
+    if not len(table):
+        raise Problems(Problem(file, "", "no rows", "at least one row"))
     problems: list[Problem] = []
     band, star_class = _bands(table, file, problems), words(table, "class", file, problems)
     M_lo, M_hi = (numbers(table, name, "mag", file, problems) for name in ("M_lo", "M_hi"))
@@ -76,6 +79,9 @@ def function_table(table: Table, file: str) -> FunctionTable:
         problems.append(Problem(file, "meta key counts", counts, f"one of {', '.join(COUNTS)}"))
     if not problems:
         _check_rows(band, star_class, M_lo, M_hi, file, problems)
+        _check_tiles(band, star_class, M_lo, M_hi, file, problems)
+        empty = [name for name in dict.fromkeys(band) if not stars[band == name].any()]
+        problems.extend(Problem(file, f"rows of band {name}", "all 0", "some stars") for name in empty)
     if problems:
         raise Problems(*problems)
     return FunctionTable(file, band, star_class, M_lo, M_hi, stars, counts, table.meta.get("window"))
@@ -108,32 +114,34 @@ def _stars(table: Table, width_mag: np.ndarray, file: str, problems: list[Proble
     per_volume = given == ["phi"] and "pc" in str(table["phi"].unit)
     unit = {"n": "", "phi": "1 / (mag pc3)" if per_volume else "1 / mag"}[given[0]]
     values = numbers(table, given[0], unit, file, problems)
-    problems.extend(
-        Problem(file, f"row {row + 1}, {given[0]}", f"{values[row]:g}", "no negative number")
-        for row in np.flatnonzero(values < 0)
-    )
+    negative = np.flatnonzero(values < 0)
+    problems.extend(row_problems(file, given[0], negative, values[negative], "no negative number"))
     return values if given == ["n"] else values * width_mag
 
 
 def _check_rows(band, star_class, lo, hi, file: str, problems: list[Problem]) -> None:
-    for i in range(len(lo)):
-        if band[i] not in REFERENCES:
-            problems.append(Problem(file, f"row {i + 1}, band", band[i], f"one of {', '.join(sorted(REFERENCES))}"))
-        if star_class[i] not in CLASS_WORDS:
-            problems.append(Problem(file, f"row {i + 1}, class", star_class[i], f"one of {', '.join(CLASS_WORDS)}"))
-        if not M_EDGES_MAG[0] <= lo[i] < hi[i] <= M_EDGES_MAG[-1]:
-            found = f"{lo[i]:g} to {hi[i]:g}"
-            problems.append(Problem(file, f"row {i + 1}, M_lo", found, "-8 <= M_lo < M_hi <= 22"))
-    for key in sorted({*zip(band, star_class, strict=True)}):
-        k = _ordered(band, star_class, lo, key)
-        for a, b in pairwise(k):
-            if abs(hi[a] - lo[b]) > 1e-9:
-                allowed = f"{hi[a]:g}, the end of the {key[1]} row before it in {key[0]}"
-                problems.append(Problem(file, f"row {b + 1}, M_lo", f"{lo[b]:g}", allowed))
+    wrong_band = np.flatnonzero(~np.isin(band, REFERENCES))
+    wrong_class = np.flatnonzero(~np.isin(star_class, CLASS_WORDS))
+    beyond = np.flatnonzero(~((M_EDGES_MAG[0] <= lo) & (lo < hi) & (hi <= M_EDGES_MAG[-1])))
+    found = [f"{lo[i]:g} to {hi[i]:g}" for i in beyond]
+    problems += row_problems(file, "band", wrong_band, band[wrong_band], f"one of {', '.join(sorted(REFERENCES))}")
+    problems += row_problems(file, "class", wrong_class, star_class[wrong_class], f"one of {', '.join(CLASS_WORDS)}")
+    problems += row_problems(file, "M_lo", beyond, found, "-8 <= M_lo < M_hi <= 22")
     both = sorted({*EVOLVED_CLASSES} & {*star_class}) if "evolved" in star_class else []
     if both:
         found = f"evolved beside {', '.join(both)}"
         problems.append(Problem(file, "column class", found, "the word evolved or its four classes, not both"))
+
+
+def _check_tiles(band, star_class, lo, hi, file: str, problems: list[Problem]) -> None:
+    """Note the rows of each band and class that do not begin where the one before them ends."""
+    rows, allowed = [], []
+    for key in sorted({*zip(band, star_class, strict=True)}):
+        for a, b in pairwise(_ordered(band, star_class, lo, key)):
+            if abs(hi[a] - lo[b]) > 1e-9:
+                rows.append(b)
+                allowed.append(f"{hi[a]:g}, the end of the {key[1]} row before it in {key[0]}")
+    problems += row_problems(file, "M_lo", rows, lo[rows], allowed)
 
 
 def _ordered(band: np.ndarray, star_class: np.ndarray, M_lo: np.ndarray, key: tuple[str, str]) -> np.ndarray:

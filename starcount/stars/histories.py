@@ -12,6 +12,17 @@ _LEAST_SHARE = 1e-6
 _GAP = 1.6
 """A step this many times the usual one means that an age is missing."""
 
+WIDEST_STEP_DEX = np.log10(2.0)
+"""Steps in the logarithm of age, where there are stars: at most a factor of 2. Between 4 and 12 Gyr the turn-off of an
+old population moves by a magnitude, and stars of one of the two ages would stand for all between."""
+
+WIDEST_STEP_FEH = 0.5
+"""Steps in [Fe/H] where there are stars, in dex, or two spreads if that is more: stars of one [Fe/H] stand for those
+around it. Public tables of isochrones have steps of 0.25 to 0.5 dex."""
+
+_SEEN_SHARE = 0.01
+"""A wide step in [Fe/H] matters where it holds more than this part of the stars."""
+
 
 @dataclass(frozen=True)
 class History:
@@ -40,12 +51,6 @@ class History:
             return age_Gyr
         return np.exp((age_Gyr - self.to_Gyr) / self.e_folding_Gyr)
 
-    def used(self, ages_Gyr: np.ndarray) -> np.ndarray:
-        """Return the ages of a table that the history needs: those inside it and the next on either side."""
-        first = np.searchsorted(ages_Gyr, self.from_Gyr, "right") - 1
-        last = np.searchsorted(ages_Gyr, self.to_Gyr, "left")
-        return ages_Gyr[max(first, 0) : last + 1]
-
     def problems(self, ages_Gyr: np.ndarray, file: str) -> list[Problem]:
         """Return what keeps the ages (age,) of a table from holding this history."""
         youngest, oldest = ages_Gyr[0], ages_Gyr[-1]
@@ -54,20 +59,25 @@ class History:
             found = f"{self.from_Gyr:g} to {self.to_Gyr:g} Gyr"
             allowed = f"inside {youngest:.6g} to {oldest:.6g} Gyr, the ages of the table"
             return [Problem(file, "star_formation", found, allowed)]
+        held = (ages_Gyr[1:] > self.from_Gyr + slack) & (ages_Gyr[:-1] < self.to_Gyr - slack)
+        wide = np.diff(np.log10(ages_Gyr)) > WIDEST_STEP_DEX + 1e-5  # ages are rounded to 1e-6 dex
         return [
-            Problem(file, "ages", f"none between {a:.4g} and {b:.4g} Gyr", "steps as elsewhere in the table")
-            for a, b in _gaps(ages_Gyr)
-            if b > self.from_Gyr and a < self.to_Gyr
+            Problem(
+                file,
+                "ages",
+                f"none between {ages_Gyr[k]:.4g} and {ages_Gyr[k + 1]:.4g} Gyr",
+                "steps of at most a factor of 2 in age" if wide[k] else "steps as elsewhere in the table",
+            )
+            for k in np.flatnonzero(held & (wide | _gaps(ages_Gyr)))
         ]
 
 
-def _gaps(ages_Gyr: np.ndarray) -> list[tuple[float, float]]:
-    """Return the steps that are wider than usual, in age or in its logarithm, whichever is more even in the table."""
+def _gaps(ages_Gyr: np.ndarray) -> np.ndarray:
+    """Return which steps are wider than usual, in age or in its logarithm, whichever is more even in the table."""
     if ages_Gyr.size < 3:
-        return []
+        return np.zeros(ages_Gyr.size - 1, bool)
     steps = min((np.diff(ages_Gyr), np.diff(np.log(ages_Gyr))), key=lambda step: step.std() / step.mean())
-    wide = np.flatnonzero(steps > _GAP * np.median(steps))
-    return [(ages_Gyr[k], ages_Gyr[k + 1]) for k in wide]
+    return steps > _GAP * np.median(steps)
 
 
 @dataclass(frozen=True)
@@ -86,10 +96,22 @@ class Metallicity:
 
     def problems(self, feh: np.ndarray, file: str) -> list[Problem]:
         """Return what keeps the [Fe/H] (node,) of a table from holding this distribution."""
-        if feh[0] - 1e-9 <= self.mean - self.spread and self.mean + self.spread <= feh[-1] + 1e-9:
-            return []
-        allowed = f"mean +- spread inside {feh[0]:g} to {feh[-1]:g}, the [Fe/H] of the table"
-        return [Problem(file, "metallicity", f"{self.mean:g} +- {self.spread:g}", allowed)]
+        if feh[0] - 1e-9 > self.mean - self.spread or self.mean + self.spread > feh[-1] + 1e-9:
+            allowed = f"mean +- spread inside {feh[0]:g} to {feh[-1]:g}, the [Fe/H] of the table"
+            return [Problem(file, "metallicity", f"{self.mean:g} +- {self.spread:g}", allowed)]
+        widest = max(2 * self.spread, WIDEST_STEP_FEH)
+        wide = (np.diff(feh) > widest + 1e-9) & (self._between(feh) > _SEEN_SHARE)
+        allowed = f"steps of at most {widest:g} dex where there are stars ({self.mean:g} +- {self.spread:g})"
+        return [
+            Problem(file, "[Fe/H]", f"none between {feh[k]:g} and {feh[k + 1]:g}", allowed)
+            for k in np.flatnonzero(wide)
+        ]
+
+    def _between(self, feh: np.ndarray) -> np.ndarray:
+        """Return the share of the stars between neighbouring nodes (node - 1,)."""
+        if self.spread == 0:
+            return ((feh[:-1] + 1e-9 < self.mean) & (self.mean < feh[1:] - 1e-9)).astype(float)
+        return np.diff(ndtr((feh - self.mean) / self.spread))
 
 
 def _between(nodes: np.ndarray, at: float) -> np.ndarray:

@@ -106,6 +106,6 @@ which meet within 1 %; here they meet exactly."""
 
 def mass_function(name: str) -> MassFunction:
     """Return a mass function by its name; raises ``UnknownName``."""
-    if name not in IMFS:
+    if not isinstance(name, str) or name not in IMFS:  # settings of a file may hold anything
         raise UnknownName("initial mass function", name, tuple(IMFS))
     return IMFS[name]

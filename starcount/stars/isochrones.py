@@ -2,7 +2,8 @@
 
 Rows of one age and [Fe/H], in the order of their initial mass, are a line in the colour-magnitude diagram. Between two
 rows everything runs linearly with mass, and stars are as many as the mass function holds between their masses. Between
-two rows of different class nothing is interpolated: half the masses belong to each.
+two rows of different class nothing is interpolated: half the masses belong to each. Rows that are left out (class -1)
+keep their place in the line, so that their stars go to no other row.
 """
 
 from collections.abc import Mapping
@@ -15,6 +16,7 @@ from starcount.errors import Problem
 from starcount.stars.cells import CELL_MAG, M_EDGES_MAG
 from starcount.stars.histories import History, Metallicity
 from starcount.stars.imf import MassFunction
+from starcount.stars.phases import LEFT_OUT
 
 TEFF_STEP = 0.01
 """Stars of one class, cell and [Fe/H] whose temperatures differ by less than 1 % become one point of the locus."""
@@ -58,13 +60,17 @@ Isochrones = Mapping[tuple[float, float], Rows]
 
 
 def isochrones(rows: Rows) -> Isochrones:
-    """Return the rows of a table by age and [Fe/H], a class ending and the next beginning half way between."""
+    """Return the rows of a table by age and [Fe/H], a class ending and the next beginning half way between.
+
+    An isochrone of which every row is left out is missing.
+    """
     rows = rows.take(np.lexsort((rows.mass_sun, rows.age_Gyr, rows.feh)))
     new = np.flatnonzero((np.diff(rows.age_Gyr) != 0) | (np.diff(rows.feh) != 0)) + 1
     limits = [0, *new.tolist(), rows.mass_sun.size]
     return {
         (float(rows.age_Gyr[first]), float(rows.feh[first])): _split(rows.take(np.arange(first, last)))
         for first, last in pairwise(limits)
+        if (rows.class_index[first:last] != LEFT_OUT).any()
     }
 
 
@@ -83,7 +89,8 @@ def isochrone_points(
 ) -> Points:
     """Return the stars alive for each solar mass formed, by kind; ``reference`` is a band of the rows.
 
-    Their sum is the sum over isochrones of weight x the mass function between its first and last mass, to rounding.
+    Their sum is the sum over isochrones of weight x the mass function over the masses that are not left out, to
+    rounding.
     """
     ages, fehs = ages_and_metallicities(lines)
     parts = [
@@ -106,7 +113,8 @@ def jumps(lines: Isochrones, imf: MassFunction, band: str, file: str) -> list[Pr
     found = []
     for (age, feh), line in lines.items():
         stars = imf.number(line.mass_sun[:-1], line.mass_sun[1:])
-        step, share = np.abs(np.diff(line.M_mag[band])), stars / stars.sum()
+        stars[line.class_index[:-1] == LEFT_OUT] = 0.0
+        step, share = np.abs(np.diff(line.M_mag[band])), stars / max(stars.sum(), np.finfo(float).tiny)
         found += [(step[k], share[k], age, feh, k) for k in np.flatnonzero((step > JUMP_MAG) & (share > JUMP_SHARE))]
     if not found:
         return []
@@ -121,15 +129,17 @@ def jumps(lines: Isochrones, imf: MassFunction, band: str, file: str) -> list[Pr
 def _pieces(line: Rows, imf: MassFunction, reference: str, weight: float) -> Points:
     """Cut an isochrone at the edges of the cells of the reference magnitude."""
     x = (line.M_mag[reference] - M_EDGES_MAG[0]) / CELL_MAG
-    low, high = np.minimum(x[:-1], x[1:]), np.maximum(x[:-1], x[1:])
+    held = np.flatnonzero((line.class_index[:-1] != LEFT_OUT) & (np.diff(line.mass_sun) > 0))
+    low, high = np.minimum(x[held], x[held + 1]), np.maximum(x[held], x[held + 1])
     first, last = np.floor(low).astype(int), np.floor(high).astype(int)
-    segment = np.repeat(np.arange(first.size), last - first + 1)
+    of = np.repeat(np.arange(held.size), last - first + 1)
     begins = np.cumsum(last - first + 1) - (last - first + 1)
-    cell = first[segment] + np.arange(segment.size) - begins[segment]
-    width = np.where(high > low, high - low, 1.0)[segment]
-    near = (np.maximum(cell, low[segment]) - low[segment]) / width
-    far = np.where(cell == last[segment], 1.0, (cell + 1 - low[segment]) / width)
-    rising = (x[1:] >= x[:-1])[segment]
+    cell = first[of] + np.arange(of.size) - begins[of]
+    width = np.where(high > low, high - low, 1.0)[of]
+    near = (np.maximum(cell, low[of]) - low[of]) / width
+    far = np.where(cell == last[of], 1.0, (cell + 1 - low[of]) / width)
+    segment = held[of]
+    rising = x[segment + 1] >= x[segment]
     t0, t1 = np.where(rising, near, 1 - far), np.where(rising, far, 1 - near)
 
     def at(values: np.ndarray, t: np.ndarray) -> np.ndarray:

@@ -35,6 +35,10 @@ VERIFIED_MAG = 0.105
 bands, are known to 0.1 mag (to the two decimals of the tables' errors), and no relation behind them is used outside the
 range its source gives. The errors are stated star by star in the tables, with what they rest on."""
 
+CLIPPED_DEX = 0.35
+"""Stars whose [Fe/H] lies this far outside that of the tracks have the colours of the last track and are not inside.
+Below [Fe/H] = -2 that is less than 0.1 mag in most colours; it takes in the lowest seventh of the halo, at -2.30."""
+
 _LEAST_SHARE = 1e-4
 """Kinds of stars rarer than this in their cell are left out."""
 
@@ -85,8 +89,9 @@ def _metallicities(mean_dex: float, spread_dex: float, n: int) -> np.ndarray:
 
 def _between(name: str, feh: float, track) -> tracks.Cells:
     """Return the cells at a metallicity, linear between the two tracks around it (in the stars each holds); so are
-    their errors."""
+    their errors. Far outside the tracks' range no error is known."""
     grid = tracks.metallicities(name)
+    far = not grid[0] - CLIPPED_DEX <= feh <= grid[-1] + CLIPPED_DEX
     feh = float(np.clip(feh, grid[0], grid[-1]))
     hi = max(int(np.searchsorted(grid, feh)), 1)
     t = (feh - grid[hi - 1]) / (grid[hi] - grid[hi - 1])
@@ -97,7 +102,7 @@ def _between(name: str, feh: float, track) -> tracks.Cells:
         part = np.divide(weight * cells.stars, stars, out=np.zeros_like(stars), where=stars > 0)
         look += np.where(part > 0, part * cells.look, 0.0)
         error += np.where(part > 0, part * cells.error_mag, 0.0)
-    return tracks.Cells(feh, stars, look, error)
+    return tracks.Cells(feh, stars, look, np.full_like(error, np.nan) if far else error)
 
 
 def _points(star_class: str, nodes: list[tracks.Cells], reference: str) -> dict[str, np.ndarray] | None:

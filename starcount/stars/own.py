@@ -13,6 +13,10 @@ from starcount.stars.loci import named_locus
 from starcount.stars.locus import Locus
 from starcount.stars.own_file import OwnFile
 
+TEFF_RANGE_K = (1000.0, 500_000.0)
+"""Temperatures that stars may have: cooler are no stars, hotter no more than a young white dwarf. A logarithm in the
+place of a temperature is outside."""
+
 LEAST_SCATTER_MAG = 1e-3
 """Colours that a table gives as they are get this little: it moves nothing by a cell."""
 
@@ -100,6 +104,12 @@ def own_window(own: OwnFile, lf_V: np.ndarray | None) -> float:
     found = own.number(where, stars, allowed, lambda value: value > 0)
     own.done()
     return found
+
+
+def require_stars(own: OwnFile, lf: np.ndarray) -> None:
+    """Note a table that holds no stars: a population of nothing would be predicted without a word."""
+    if not lf.any():
+        own.wrong_table("rows", "no stars in any of them", "some stars")
 
 
 def systems_per_star(class_index: np.ndarray, M_V_mag: np.ndarray) -> np.ndarray:

@@ -8,17 +8,19 @@ import numpy as np
 
 from starcount.constants import STAR_CLASSES
 from starcount.errors import InputError
-from starcount.stars.bands import require_band
+from starcount.stars.bands import bluer_first, require_band
 from starcount.stars.cells import C_EDGES_MAG, CELL_MAG, M_EDGES_MAG, M_MIDDLE_MAG, to_cells
 from starcount.stars.ecsv import numbers, words
 from starcount.stars.locus import Locus
 from starcount.stars.own import (
     LEAST_SCATTER_MAG,
+    TEFF_RANGE_K,
     Kinds,
     M_V_of_dwarfs,
     Own,
     Teff_of_dwarfs,
     own_window,
+    require_stars,
     systems_per_star,
 )
 from starcount.stars.own_file import OwnFile
@@ -42,6 +44,8 @@ def own_colour_table(own: OwnFile) -> Own:
     _check(own, rows)
     own.done()
     kinds = _kinds(rows, band, colour, own.counts == "stars")
+    require_stars(own, kinds.function())
+    own.done()
     systems = own_window(own, kinds.function() if band == "V" else None)
 
     @cache
@@ -52,17 +56,28 @@ def own_colour_table(own: OwnFile) -> Own:
 
 
 def _bands(own: OwnFile) -> tuple[str, tuple[str, str]]:
-    colour = own.settings.get("colour")
-    if not isinstance(colour, list) or len(colour) != 2 or colour[0] == colour[1]:
-        own.wrong("colour", "missing" if colour is None else repr(colour), 'two bands, bluer first: ["BP", "RP"]')
-        colour = []
-    band = own.settings.get("band")
-    for key, name in (("band", band), *(("colour", c) for c in colour)):
-        try:
-            require_band(name)
-        except InputError as refused:
-            own.wrong(key, str(refused), "a band")
+    given, band = own.settings.get("colour"), own.settings.get("band")
+    two = isinstance(given, list) and len(given) == 2 and all(isinstance(name, str) for name in given)
+    colour = given if two else []
+    if isinstance(band, str):
+        _note_band(own, "band", band)
+    else:
+        own.wrong("band", "missing" if band is None else repr(band), "a band")
+    known = [_note_band(own, "colour", name) for name in colour]
+    if not two or (all(known) and not bluer_first(*colour)):
+        allowed = 'two different bands, bluer first: ["BP", "RP"]'
+        own.wrong("colour", "missing" if given is None else repr(given), allowed)
     return str(band), tuple(colour)
+
+
+def _note_band(own: OwnFile, key: str, name: str) -> bool:
+    """Whether stars can be counted in a band; it is noted where they cannot."""
+    try:
+        require_band(name)
+    except InputError as refused:
+        own.wrong(key, str(refused), "a band")
+        return False
+    return True
 
 
 def _rows(own: OwnFile) -> dict[str, np.ndarray]:
@@ -81,12 +96,14 @@ def _check(own: OwnFile, rows: dict[str, np.ndarray]) -> None:
     for name, key, edges in (("M", "M_lo", M_EDGES_MAG), ("c", "c_lo", C_EDGES_MAG)):
         low, high = rows[f"{name}_lo"], rows[f"{name}_hi"]
         allowed = f"{edges[0]:g} <= {name}_lo < {name}_hi <= {edges[-1]:g}"
-        for i in np.flatnonzero(~((edges[0] <= low) & (low < high) & (high <= edges[-1]))):
-            own.wrong_table(f"row {i + 1}, {key}", f"{low[i]:g} to {high[i]:g}", allowed)
-    for i in np.flatnonzero(rows["n"] < 0):
-        own.wrong_table(f"row {i + 1}, n", f"{rows['n'][i]:g}", "no negative number")
-    for i in np.flatnonzero(~np.isin(rows["class"], STAR_CLASSES)):
-        own.wrong_table(f"row {i + 1}, class", rows["class"][i], f"one of {', '.join(STAR_CLASSES)}")
+        beyond = np.flatnonzero(~((edges[0] <= low) & (low < high) & (high <= edges[-1])))
+        own.wrong_rows(key, beyond, [f"{low[i]:g} to {high[i]:g}" for i in beyond], allowed)
+    negative = np.flatnonzero(rows["n"] < 0)
+    own.wrong_rows("n", negative, rows["n"][negative], "no negative number")
+    unknown = np.flatnonzero(~np.isin(rows["class"], STAR_CLASSES))
+    own.wrong_rows("class", unknown, rows["class"][unknown], f"one of {', '.join(STAR_CLASSES)}")
+    if "Teff" in rows:
+        own.beyond("Teff", rows["Teff"], *TEFF_RANGE_K, "K")
     if not own.problems:
         for name in dict.fromkeys(rows["class"]):
             _check_tiles(own, rows, np.flatnonzero(rows["class"] == name), str(name))
@@ -96,14 +113,17 @@ def _check_tiles(own: OwnFile, rows: dict[str, np.ndarray], chosen: np.ndarray, 
     """Each row must begin in colour where the one before it ends or, at the next magnitude, in magnitude."""
     M_lo, M_hi, c_lo, c_hi = (rows[key] for key in ("M_lo", "M_hi", "c_lo", "c_hi"))
     order = chosen[np.lexsort((c_lo[chosen], M_hi[chosen], M_lo[chosen]))]
+    wrong: dict[str, list] = {"c_lo": [], "M_lo": []}
     for a, b in pairwise(order):
         if M_lo[a] == M_lo[b] and M_hi[a] == M_hi[b]:
             key, end, begin, at = "c_lo", c_hi[a], c_lo[b], f" at M {M_lo[b]:g} to {M_hi[b]:g}"
         else:
             key, end, begin, at = "M_lo", M_hi[a], M_lo[b], ""
         if abs(end - begin) > _SAME_MAG:
-            allowed = f"{end:g}, where the {name} row before it ends{at}"
-            own.wrong_table(f"row {b + 1}, {key}", f"{begin:g}", allowed)
+            wrong[key].append((b, begin, f"{end:g}, where the {name} row before it ends{at}"))
+    for key, noted in wrong.items():
+        if noted:
+            own.wrong_rows(key, *zip(*noted, strict=True))
 
 
 def _kinds(rows: dict[str, np.ndarray], band: str, colour: tuple[str, str], single_stars: bool) -> Kinds:

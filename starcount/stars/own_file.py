@@ -13,7 +13,7 @@ M_lo = "mag"
 """
 
 import tomllib
-from collections.abc import Callable, Iterable, Mapping
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 
@@ -22,6 +22,7 @@ from astropy import units as u
 from astropy.table import Table
 
 from starcount.errors import Problem, Problems
+from starcount.stars.ecsv import row_problems
 
 FORMATS = {".ecsv": "ascii.ecsv", ".fits": "fits", ".vot": "votable", ".parquet": "parquet"}
 """Ending of a table's file -> how astropy calls its format."""
@@ -74,6 +75,17 @@ class OwnFile:
         """Note something wrong in the table."""
         self.problems.append(Problem(self.table_file, where, str(found), allowed))
 
+    def wrong_rows(
+        self, column: str, rows: Sequence[int], found: Sequence[object], allowed: str | Sequence[str]
+    ) -> None:
+        """Note bad rows of the table, see ``ecsv.row_problems``."""
+        self.problems.extend(row_problems(self.table_file, column, rows, found, allowed))
+
+    def beyond(self, column: str, values: np.ndarray, lo: float, hi: float, unit: str) -> None:
+        """Note the rows whose ``values`` (row,) are outside the range; not those without a value, noted already."""
+        rows = np.flatnonzero((values < lo) | (values > hi))
+        self.wrong_rows(column, rows, values[rows], f"{lo:g} to {hi:g} {unit}".rstrip())
+
     def known(self, keys: Iterable[str]) -> None:
         """Note the settings that this kind of population does not have."""
         allowed = sorted(_COMMON | set(keys))
@@ -122,7 +134,10 @@ def open_own(path: Path) -> OwnFile:
     ]
     if problems:
         raise Problems(*problems)
-    return OwnFile(path, settings, _table(path, settings))
+    table = _table(path, settings)
+    if not len(table):
+        raise Problems(Problem(str(path.parent / settings["table"]), "", "no rows", "at least one row"))
+    return OwnFile(path, settings, table)
 
 
 def _texts(value: object) -> bool:

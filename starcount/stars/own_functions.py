@@ -15,6 +15,7 @@ from starcount.stars.locus import Locus
 from starcount.stars.own import Own
 from starcount.stars.own_file import OwnFile
 from starcount.stars.spread import spread
+from starcount.stars.tracks import metallicities
 
 log = logging.getLogger(__name__)
 
@@ -62,11 +63,22 @@ def _colours(own: OwnFile) -> Colours:
         own.wrong("colours_of, metallicity", " and ".join(given) or "neither", "one of the two")
         return _UNSAID
     if given == ["metallicity"]:
-        return metallicity_setting(own)
+        return _near_the_tracks(own, metallicity_setting(own))
     name = own.settings["colours_of"]
-    if name not in METALLICITY:
+    if not isinstance(name, str) or name not in METALLICITY:
         own.wrong("colours_of", repr(name), f"one of {', '.join(METALLICITY)}")
     return str(name)
+
+
+def _near_the_tracks(own: OwnFile, colours: tuple[float, float]) -> tuple[float, float]:
+    """Note a mean [Fe/H] that lies outside that of our tracks by more than its spread."""
+    mean, spread_dex = colours
+    grid = metallicities("dwarfs")
+    if mean < grid[0] - spread_dex or mean > grid[-1] + spread_dex:
+        found = f"mean {mean:g} with spread {spread_dex:g}"
+        allowed = f"a mean no further than the spread outside {grid[0]:g} to {grid[-1]:g}, the [Fe/H] of our colours"
+        own.wrong("metallicity", found, allowed)
+    return colours
 
 
 def _of_table(own: OwnFile, table: FunctionTable, colours: Colours) -> Own:

@@ -6,15 +6,16 @@ import numpy as np
 
 from starcount.errors import Problem, UnknownName
 from starcount.stars.bands import BANDS
+from starcount.stars.cells import M_EDGES_MAG
 from starcount.stars.ecsv import numbers, words
 from starcount.stars.histories import History, Metallicity
 from starcount.stars.imf import MassFunction, mass_function
 from starcount.stars.isochrones import Isochrones, Rows, ages_and_metallicities, isochrone_points, isochrones, jumps
 from starcount.stars.locus import Locus
-from starcount.stars.own import Kinds, M_V_of_dwarfs, Own, own_window, systems_per_star
+from starcount.stars.own import TEFF_RANGE_K, Kinds, M_V_of_dwarfs, Own, own_window, require_stars, systems_per_star
 from starcount.stars.own_file import OwnFile
 from starcount.stars.own_functions import metallicity_setting
-from starcount.stars.phases import classes_by_phase, classes_by_shape
+from starcount.stars.phases import LEFT_OUT, classes_by_phase, classes_by_shape
 
 SCATTER_MAG = 0.04
 """What rotation, companions and photometry of the templates leave about an isochrone; adopted, not measured."""
@@ -26,7 +27,7 @@ def own_isochrones(own: OwnFile) -> Own:
     Columns: ``initial_mass`` (solar masses), ``age`` (with its unit) or ``log_age`` (of years), ``feh``, ``Teff`` (K)
     or ``log_Teff``, one column a band under the band's name, and ``phase`` (with the setting ``phases``) or ``log_g``.
     Entries are single stars unless ``counts = "systems"``. Without V ``window`` gives the systems with 4.5 < M_V < 8.5
-    for each solar mass formed.
+    for each solar mass formed. Inside the history ages may be a factor of 2 apart, and [Fe/H] 0.5 dex or two spreads.
     """
     own.known({"imf", "star_formation", "metallicity", "phases"})
     imf, history, metallicity = _imf(own), _history(own), Metallicity(*metallicity_setting(own))
@@ -49,7 +50,10 @@ def own_isochrones(own: OwnFile) -> Own:
         scatter = np.full(number.size, SCATTER_MAG)
         return Kinds(band, points.class_index, points.cell, number, points.Teff_K, scatter, dict(points.M_mag))
 
-    stars = own_window(own, kinds("V").function() if "V" in rows.M_mag else None)
+    in_any_band = kinds(any_band).function()
+    require_stars(own, in_any_band)
+    own.done()
+    stars = own_window(own, in_any_band if any_band == "V" else None)
 
     @cache
     def build(reference: str) -> tuple[np.ndarray, Locus]:
@@ -88,18 +92,33 @@ def _rows(own: OwnFile) -> Rows:
     if not bands:
         own.wrong_table("columns", "no band", f"at least one column of {', '.join(BANDS)} (see [columns])")
     mass = _column(own, "initial_mass", "solMass")
-    for row in np.flatnonzero(mass <= 0):
-        own.wrong_table(f"row {row + 1}, initial_mass", f"{mass[row]:g}", "more than 0")
-    age = _age_Gyr(own)
-    feh = _plain(own, "feh")
-    temperature = 10 ** _plain(own, "log_Teff") if "log_Teff" in own.table.colnames else _column(own, "Teff", "K")
+    none = np.flatnonzero(mass <= 0)
+    own.wrong_rows("initial_mass", none, mass[none], "more than 0")
+    age, feh, Teff_K = _age_Gyr(own), _plain(own, "feh"), _Teff_K(own)
     M_mag = {name: _column(own, name, "mag") for name in bands}
     if own.problems:
         nothing = np.zeros(0)
         return Rows(nothing, nothing, nothing, nothing, nothing, {})
-    class_index = _classes(own, mass, age, feh, temperature)
-    rows = Rows(mass, age, feh, class_index, temperature, M_mag)
-    return rows.take(np.flatnonzero(class_index >= 0))
+    class_index = _classes(own, mass, age, feh, Teff_K)
+    _check_ranges(own, class_index != LEFT_OUT, Teff_K, M_mag)
+    return Rows(mass, age, feh, class_index, Teff_K, M_mag)
+
+
+def _check_ranges(own: OwnFile, kept: np.ndarray, Teff_K: np.ndarray, M_mag: dict[str, np.ndarray]) -> None:
+    """Note temperatures and magnitudes, of rows that are not left out, that no star has: 99 is no magnitude."""
+    if "log_Teff" in own.table.colnames:
+        own.beyond("log_Teff", np.where(kept, own.table["log_Teff"], np.nan), *np.log10(TEFF_RANGE_K), "")
+    else:
+        own.beyond("Teff", np.where(kept, Teff_K, np.nan), *TEFF_RANGE_K, "K")
+    for name, M in M_mag.items():
+        own.beyond(name, np.where(kept, M, np.nan), M_EDGES_MAG[0], M_EDGES_MAG[-1], "mag")
+
+
+def _Teff_K(own: OwnFile) -> np.ndarray:
+    if "log_Teff" not in own.table.colnames:
+        return _column(own, "Teff", "K")
+    with np.errstate(over="ignore"):  # refused with its row, see _check_ranges
+        return 10 ** _plain(own, "log_Teff")
 
 
 def _age_Gyr(own: OwnFile) -> np.ndarray:
@@ -107,6 +126,8 @@ def _age_Gyr(own: OwnFile) -> np.ndarray:
     if "log_age" in own.table.colnames:
         return 10 ** (np.round(_plain(own, "log_age"), 6) - 9)
     age = numbers(own.table, "age", "Gyr", own.table_file, own.problems)
+    none = np.flatnonzero(age <= 0)
+    own.wrong_rows("age", none, age[none], "more than 0 Gyr")
     return 10 ** np.round(np.log10(np.where(age > 0, age, np.nan)), 6)
 
 

@@ -34,7 +34,7 @@ def _read(path: Path, digest: str) -> Own:
     if path.suffix == ".ecsv":
         return bare_function(path)
     kind = settings_of(path).get("kind")
-    if kind not in KINDS:
+    if not isinstance(kind, str) or kind not in KINDS:
         found = "missing" if kind is None else repr(kind)
         raise Problems(Problem(str(path), "kind", found, f"one of {', '.join(KINDS)}"))
     return KINDS[kind](open_own(path))

@@ -3,6 +3,7 @@
 import numpy as np
 
 from starcount.constants import STAR_CLASSES
+from starcount.stars.ecsv import SHOWN_ROWS
 from starcount.stars.own_file import OwnFile
 
 PHASE_WORDS = (*STAR_CLASSES, "evolved", "core helium", "left out")
@@ -26,7 +27,7 @@ def classes_by_phase(own: OwnFile, phase: np.ndarray, feh: np.ndarray, log_g: np
     """Return the class (row,) by the setting ``phases``, {word of ``PHASE_WORDS``: [phases]}; -1 is left out."""
     class_index = np.full(phase.size, LEFT_OUT)
     given = own.settings.get("phases")
-    if not isinstance(given, dict) or not all(isinstance(listed, list) for listed in given.values()):
+    if not isinstance(given, dict) or not all(_labels(listed) for listed in given.values()):
         found = "missing" if given is None else repr(given)
         own.wrong("phases", found, "a table of lists, such as dwarf = [0], evolved = [2], for the column phase")
         return class_index
@@ -38,12 +39,18 @@ def classes_by_phase(own: OwnFile, phase: np.ndarray, feh: np.ndarray, log_g: np
         rows = np.isin(phase, listed)
         known |= rows
         class_index[rows] = _class_of(own, word, feh[rows], None if log_g is None else log_g[rows])
-    for name in np.unique(phase[~known]):
-        label = f"{name:g}" if isinstance(name, float) else name
-        own.wrong(
-            "phases", f"phase {label} is in none of them", "every phase of the table, under 'left out' if need be"
-        )
+    missing = [f"{name:g}" if isinstance(name, float) else str(name) for name in np.unique(phase[~known])]
+    if missing:
+        more = f" and {len(missing) - SHOWN_ROWS} others" if len(missing) > SHOWN_ROWS else ""
+        found = f"phase {', '.join(missing[:SHOWN_ROWS])}{more} is in none of them"
+        own.wrong("phases", found, "every phase of the table, under 'left out' if need be")
+    elif not (class_index != LEFT_OUT).any():
+        own.wrong("phases", "every row is left out", "some rows of a class")
     return class_index
+
+
+def _labels(given: object) -> bool:
+    return isinstance(given, list) and all(isinstance(label, int | float | str) for label in given)
 
 
 def _class_of(own: OwnFile, word: str, feh: np.ndarray, log_g: np.ndarray | None) -> np.ndarray | int:

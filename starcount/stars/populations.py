@@ -26,8 +26,8 @@ def population(name_or_path: str | Path, reference: str) -> np.ndarray:
     """Return the luminosity function (class, cell) of a population per system in the reference window 4.5 < M_V < 8.5.
 
     The window is counted in M_V whatever the band, so that fits in V and in G mean the same density: in V rows, or for
-    our own populations in G along their locus. Functions of single stars are made functions of systems, window included. ``name_or_path`` is a name in
-    ``POPULATIONS`` or a file of the user's own (see ``own_tables``).
+    our own populations in G along their locus. Functions of single stars are made functions of systems, window
+    included. ``name_or_path`` is a name in ``POPULATIONS`` or a file of the user's own (see ``own_tables``).
 
     Raises ``UnknownName`` for a population or band, ``Problems`` for the file.
     """

@@ -36,9 +36,11 @@ def spread(
     _require_kinds(locus, lf_ref)
     _require_magnitudes(locus, held, (band,) if colour is None or colour in locus.pairs else (band, *colour))
     colour_mag = locus.colour_mag(*colour)[held] if colour else np.zeros(held.sum())
+    Teff_K = locus.Teff_K[held]
+    _require_finite(np.where(Teff_K > 0, Teff_K, np.nan), colour_mag, locus.scatter_mag[held], share[held])
     temperatures = np.atleast_1d(np.asarray(temperatures_K, float))
     out = np.zeros((len(lf_ref), temperatures.size, M_MIDDLE_MAG.size, C_EDGES_MAG.size - 1 if colour else 1))
-    lower, part = _temperature_shares(locus.Teff_K[held], temperatures)
+    lower, part = _temperature_shares(Teff_K, temperatures)
     _spread(
         np.ascontiguousarray(lf_ref, float),
         locus.class_index[held],
@@ -84,6 +86,14 @@ def _require_magnitudes(locus: Locus, held: np.ndarray, bands: tuple[str, ...]) 
                 f"stars of class {', '.join(words)} have no magnitude in band {name!r} (reference magnitudes "
                 f"{between[0]:.1f} to {between[1]:.1f}): no source gives their colours there"
             )
+
+
+def _require_finite(*arrays: np.ndarray) -> None:
+    """Cells are reckoned from these numbers, and a cell of nan would lie outside the memory of the result."""
+    if not all(np.isfinite(array).all() for array in arrays):
+        raise InputError(
+            "a locus holds a temperature, colour, scatter or share that is no finite number (or Teff <= 0)"
+        )
 
 
 def _temperature_shares(Teff_K: np.ndarray, temperatures_K: np.ndarray) -> tuple[np.ndarray, np.ndarray]:

@@ -14,5 +14,6 @@ TRACERS_ABSENT = {
 
 def require_not_absent(name: str) -> None:
     """Refuse a kind of stars that is known but absent, with the reason."""
-    if name in TRACERS_ABSENT:
-        raise InputError(f"{name}: not in these populations; {TRACERS_ABSENT[name]}")
+    for absent, reason in TRACERS_ABSENT.items():
+        if name.casefold() == absent.casefold():
+            raise InputError(f"{absent}: not in these populations; {reason}")

@@ -7,10 +7,11 @@ import numpy as np
 import tomli_w
 
 from starcount import stars
+from starcount.dust.bands import FLAT_TEMPERATURE_K
 from starcount.errors import InputError
 from starcount.files import write_text
 from starcount.galaxy import Galaxy
-from starcount.stars.bands import require_band
+from starcount.stars.bands import bluer_first, require_band
 from starcount.stars.own_tables import read_own
 from starcount.stars.sources import sources
 from starcount.steps import folder, inputs, record
@@ -29,7 +30,7 @@ COLOURS = {
 }
 """The colour shown beside a band where none is asked for, by system."""
 
-_ANY_TEMPERATURE_K = np.array([5800.0])
+_ANY_TEMPERATURE_K = np.array([FLAT_TEMPERATURE_K])
 
 
 def show(
@@ -42,6 +43,8 @@ def show(
 
     for given in (band, *(colour or ())):
         require_band(given)
+    if colour and not bluer_first(*colour):
+        raise InputError(f"colour {' '.join(colour)}: expected two different bands, bluer first")
     is_file = Path(name).suffix in {".toml", ".ecsv"}
     name = Path(name) if is_file else str(name)
     final = folder.run_path(_run_name(name)) if out is None else folder.new(Path(out))
