@@ -15,7 +15,7 @@ A_OVER_E = {
     "LSST g": 3.237, "LSST r": 2.273, "LSST i": 1.684, "LSST z": 1.323, "LSST y": 1.088,
     "J": 0.723, "H": 0.460, "Ks": 0.310,
 }  # fmt: skip
-"""Schlafly & Finkbeiner 2011, Table 6, R_V = 3.1 (J, H, Ks: the 2MASS rows that extend it): mag per mag of E(B-V)."""
+"""Schlafly & Finkbeiner 2011, Table 6, R_V = 3.1 (J, H, Ks: the IRSA dust extinction service): A / E(B-V)."""
 
 F99 = {
     "B": 1.317, "I": 0.5625, "SDSS u": 1.568, "SDSS g": 1.224, "SDSS r": 0.848, "SDSS i": 0.6305, "SDSS z": 0.474,

@@ -9,7 +9,8 @@ import pytest
 from numpy.testing import assert_allclose
 from scipy import stats
 
-from starcount.predict import counts, draw_counts, predict_counts
+from starcount.predict import as_prediction, counts, draw_counts, predict_counts
+from starcount.predict.empty_bins import caution_of_empty_bins
 from starcount.tails import tail_probability
 
 
@@ -251,6 +252,44 @@ def test_stars_outside_verified_ranges_are_a_caution_from_one_per_cent_on(survey
         cautions = predict_counts(invented.model(survey, outside)).cautions()
         assert len(cautions) == said
     assert "group all: 3.2 % of the expected stars" in cautions[0]
+
+
+def _emptied(survey, keep):
+    """The caution of a prediction without the stars and galaxies of the bins where ``keep`` (m, c) is zero."""
+    group = survey.groups[0]
+    keep = np.broadcast_to(keep, (group.edges_mag.size - 1, group.n_bin // (group.edges_mag.size - 1)))
+    return caution_of_empty_bins(group, 100.0 * np.tile(keep.ravel(), (group.fields.name.size, 1)))
+
+
+def test_bins_without_any_expected_star_are_a_caution(in_colour, survey):
+    """Magnitude rows and colour columns that hold less than 1e-6 in all fields are named, neighbours as one."""
+    coloured, _ = in_colour
+    keep = np.ones(10)
+    keep[[0, 4, 5, 9]] = 0.0
+    said = _emptied(coloured, keep)
+    assert "no star is expected at BP-RP all bluer to 0.2, BP-RP 1.1 to 1.7, BP-RP 2.6 to all redder in any" in said
+    assert "group all: no star is expected at G 13 to 14 in any" in _emptied(survey, (np.arange(10) != 3)[:, None])
+    # A row of a hundred thousandth part and a single bin are no matter for a caution.
+    for share in (1e-3, 1e-5):
+        assert _emptied(survey, np.where(np.arange(10) == 3, share, 1.0)[:, None]) == ""
+    one_bin = np.ones((10, 10))
+    one_bin[3, 4] = 0.0
+    assert _emptied(coloured, one_bin) == ""
+
+
+def test_a_group_without_stars_is_a_caution(model, in_colour):
+    """What is printed as expected 0.0 is said in words; the whole sky of the fake has no such caution."""
+    coloured, _ = in_colour
+    for stars in (0.0, 1e-9):
+        assert "group all: no star is expected in any of its bins and fields" in _emptied(coloured, stars)
+    assert predict_counts(model).cautions() == []
+
+
+def test_predictions_pass_the_caution_on(in_colour):
+    """A caution about empty bins is among those that the screen and the page show."""
+    survey, model = in_colour
+    empty = replace(predict_counts(model).groups["all"], expected=np.zeros((6, 100)))
+    assert len(as_prediction(survey, {"all": empty}, "values").cautions()) == 1
 
 
 def test_predicted_intervals_cover_counts_drawn_from_the_model():

@@ -348,7 +348,9 @@ def test_old_populations_hold_every_class_that_the_model_has(name, he, band):
     assert shares[other] == 0.0
     assert min(shares[k] for k in ("dwarf", "subgiant", "red giant")) > 0
     model = {"thick disc": 6.6e-4 / 0.188, "halo": 6.3e-4 / 0.218, "bulge": 6.6e-4 / 0.165}[name]
-    assert_allclose(lf[stars.CLASSES.index(he)].sum(), model / 0.87, rtol=0.05)  # two digits; 0.87 to 0.88; the window in G
+    assert_allclose(
+        lf[stars.CLASSES.index(he)].sum(), model / 0.87, rtol=0.05
+    )  # two digits; 0.87 to 0.88; the window in G
 
 
 def test_tables_of_stars_become_systems(tmp_path):

@@ -1,14 +1,16 @@
 """Surveys in magnitude and colour: read as the files stand, written back byte for byte, mistakes named."""
 
 import re
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
 from numpy.testing import assert_array_equal
 from survey_files import COLOUR_ERRORS, COMPLETENESS_IN_COLOUR, COUNTS_IN_COLOUR, FILES_IN_COLOUR, differences, lay_out
 
+from starcount import stars, steps
 from starcount.errors import Problems
-from starcount.survey import FaintBP, circle_fields, make_group, read_survey, write_survey
+from starcount.survey import FaintBP, bin_settings, circle_fields, make_group, read_survey, write_survey
 
 BANDS = ("G", "BP", "RP", "V", "SDSS g", "SDSS r")
 
@@ -87,6 +89,18 @@ MISTAKES = {
     "same bands": ("survey", '["BP", "RP"]', '["BP", "BP"]', "colour: .*; expected two different bands, bluer first"),
     "a text": ("survey", '["BP", "RP"]', '"BP-RP"', "colour: 'BP-RP'; expected a list of texts"),
     "unknown band": ("survey", '["BP", "RP"]', '["BP", "Rp"]', r"colour: 'Rp'; .*did you mean 'RP'\?"),
+    "bins too red": (
+        "survey",
+        "[-inf, 0.5, 1.5, inf]",
+        "[12, 13, inf]",
+        "line 11, group 1, edges_colour_mag: 12 to inf mag, where no star can be; expected .* -1.5 to 7 mag, up to 12",
+    ),
+    "bins too blue": (
+        "survey",
+        "edges_colour_mag = [-inf, 0.5, 1.5, inf]",
+        "colour_bins = {from = -5, to = -1.5, step = 0.5}",
+        "line 11, group 1, colour_bins: -5 to -1.5 mag, where no star can be; expected bins that meet the colours",
+    ),
     "no colour bins": (
         "survey",
         "edges_colour_mag = [-inf, 0.5, 1.5, inf]",
@@ -199,6 +213,38 @@ def test_bands_left_out_are_refused_with_the_reason(tmp_path):
     folder = lay_out(tmp_path, FILES_IN_COLOUR, survey=('"RP"]', '"R"]'))
     with pytest.raises(Problems, match=r"line 10, group 1, colour: 'R', left out \(no locus\); expected one of G, BP"):
         read_survey(folder, bands=BANDS, absent={"R": "no locus"})
+
+
+@pytest.mark.parametrize("colour", [("RP", "BP"), ("RP", "SDSS i"), ("Ks", "V")])
+def test_the_redder_band_first_is_refused(tmp_path, colour):
+    """By the bands' wavelengths, with line and key; two bands at one wavelength (RP's, here) are no colour."""
+    nm = {name: SimpleNamespace(wavelength_nm=band.wavelength_nm) for name, band in stars.BANDS.items()}
+    nm["SDSS i"] = nm["RP"]
+    change = '["BP", "RP"]', str(list(colour)).replace("'", '"')
+    folder = lay_out(tmp_path, FILES_IN_COLOUR, survey=change)
+    with pytest.raises(Problems, match=r"line 10, group 1, colour: '.*' at .* nm; expected two different bands, bluer"):
+        read_survey(folder, bands=nm)
+
+
+def test_the_program_refuses_a_redder_band_first(tmp_path):
+    """The check of a survey knows the wavelengths of our bands, and takes the right order."""
+    assert steps.check(lay_out(tmp_path / "right", FILES_IN_COLOUR))["groups"][0]["colour"]["bands"] == ["BP", "RP"]
+    with pytest.raises(Problems, match=r"'RP' at 7.* nm before 'BP' at 5.* nm; expected two different bands, bluer"):
+        steps.check(lay_out(tmp_path / "turned", FILES_IN_COLOUR, survey=('["BP", "RP"]', '["RP", "BP"]')))
+
+
+@pytest.mark.parametrize("edges", ["[-5, -4, -1.4]", "[11.9, 13]", "[-inf, -3, inf]", "[8, 9]"])
+def test_bins_that_a_star_may_reach_pass(tmp_path, edges):
+    """One end within -1.5 to 12 mag is enough: dust reddens and errors scatter."""
+    folder = lay_out(tmp_path, FILES_IN_COLOUR, survey=("[-inf, 0.5, 1.5, inf]", edges))
+    text = (folder / "survey.toml").read_text()
+    (folder / "survey.toml").write_text(text.replace('counts = "counts.ecsv"\n', ""))
+    assert len(read_survey(folder).groups) == 1
+
+
+def test_colours_of_stars_are_those_of_their_tables():
+    """Surveys know no stars: their limits of colour are stated again, and are the cells' own."""
+    assert tuple(stars.C_EDGES_MAG[[0, -1]]) == (bin_settings.BLUEST_MAG, bin_settings.REDDEST_MAG)
 
 
 def test_too_many_bins_are_refused(tmp_path):

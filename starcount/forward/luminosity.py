@@ -147,7 +147,6 @@ def _in_band(shares: np.ndarray, locus: stars.Locus) -> np.ndarray:
     return np.where(total > 0, found / np.where(total > 0, total, 1.0), shares)
 
 
-
 def _rows(galaxy: Galaxy, component: Component) -> slice:
     owners = [c is component for c, _ in galaxy.layers]
     return slice(owners.index(True), owners.index(True) + sum(owners))

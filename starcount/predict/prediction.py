@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 from astropy.table import QTable, vstack
 
+from starcount.predict.empty_bins import caution_of_empty_bins
 from starcount.tails import tail_probability
 
 if TYPE_CHECKING:
@@ -145,13 +146,16 @@ class Prediction:
         return worst
 
     def cautions(self) -> list[str]:
-        """What to know before using the numbers: groups of which more than a little is extrapolated."""
-        return [
+        """What to know before using the numbers: bins without stars, groups of which more than a little is
+        extrapolated."""
+        extrapolated = [
             f"group {name}: {100 * group.outside:.2g} % of the expected stars rest on magnitude relations outside the "
             "range that their sources verified"
             for name, group in self.groups.items()
             if group.outside is not None and group.outside > OUTSIDE_SHARE
         ]
+        without_stars = (caution_of_empty_bins(group.group, group.expected) for group in self.groups.values())
+        return [*filter(None, without_stars), *extrapolated]
 
 
 def _least_probable(table: QTable, number: int) -> QTable:

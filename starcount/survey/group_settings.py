@@ -21,12 +21,16 @@ GROUP = {
 REQUIRED = ("name", "band", "fields")
 _NEED_COLOUR = ("colour_bins", "edges_colour_mag", "colour_error", "faint_BP_noise")
 _POSITIVE = {"faint_BP_noise": "electrons per second", "resolution_arcsec": "arcsec"}
+_TWO_BANDS = "two different bands, bluer first"
 _NAME = re.compile(r"\w[\w .+-]*")
 
 
 @dataclass(frozen=True)
 class Bands:
-    """The bands that may stand in a survey (None: any), and those left out on purpose with the reason."""
+    """The bands that may stand in a survey (None: any), and those left out on purpose with the reason.
+
+    ``known`` as a mapping to objects with ``wavelength_nm`` also says which of two bands is the bluer one.
+    """
 
     known: Collection[str] | None
     absent: Mapping[str, str]
@@ -37,6 +41,13 @@ class Bands:
             return []
         reason = f", left out ({self.absent[band]})" if band in self.absent else ""
         return [place.problem(key, repr(band) + reason, one_of(band, tuple(self.known)))]
+
+    def trouble_with_order(self, blue: str, red: str) -> str:
+        """In words, that the first of two known bands is not the bluer one; '' where it is, or nothing says so."""
+        if not isinstance(self.known, Mapping):
+            return ""
+        blue_nm, red_nm = (self.known[band].wavelength_nm for band in (blue, red))
+        return "" if blue_nm < red_nm else f"{blue!r} at {blue_nm:g} nm before {red!r} at {red_nm:g} nm"
 
 
 def trouble_with_group(group: dict, place: Place, bands: Bands) -> list[Problem]:
@@ -71,8 +82,11 @@ def _of_colour(group: dict, place: Place, bands: Bands) -> list[Problem]:
     if colour is None:
         return []
     if len(colour) != 2 or colour[0] == colour[1] or "" in colour:
-        return [place.problem("colour", repr(colour), "two different bands, bluer first")]
+        return [place.problem("colour", repr(colour), _TWO_BANDS)]
     problems = [problem for band in colour for problem in bands.problems("colour", band, place)]
+    turned = "" if problems else bands.trouble_with_order(*colour)
+    if turned:
+        problems.append(place.problem("colour", turned, _TWO_BANDS))
     band = usable(group, "band", TEXT)
     if "faint_BP_noise" in group and (colour != ["BP", "RP"] or band not in faint_BP.BANDS):
         found = f"colour {'-'.join(colour)} in band {band}"

@@ -28,6 +28,7 @@ def read_survey(
 
     Raises Problems with everything that is wrong. With ``bands`` a group in any other band, or with another band in
     its colour, is refused, with the reason if ``absent`` has one; without, the names of bands are taken as they are.
+    With a mapping from names to objects with ``wavelength_nm`` so is a colour whose first band is not the bluer one.
     """
     path = Path(path)
     path = path / SETTINGS_FILE if path.is_dir() else path
