@@ -45,8 +45,8 @@ class Response:
     def slab(self, table: np.ndarray, slab: int, ranges: np.ndarray | None = None) -> np.ndarray:
         """Return the matrix (row, bin) of one slab for a table of stars (layer, temperature, cell, colour cell).
 
-        With a gain the table is a pair (2, ...): all stars, and the dwarfs that may count as more than one. Rows are ordered by temperature, shift and layer; ``ranges`` (temperature, 2) are the shifts to be kept, all
-        without.
+        With a gain the table is a pair (2, ...): all stars, and the dwarfs that may count as more than one. Rows are
+        ordered by temperature, shift and layer; ``ranges`` (temperature, 2) are the shifts to be kept, all without.
         """
         if self.gain is None:
             return self._rows(table, slab, ranges, None)
@@ -128,7 +128,8 @@ def excess_grid(
 ) -> np.ndarray:
     """Return the colour excesses (slab,) of the grid, up to ``largest_mag`` or to where no star meets an edge any more.
 
-    ``bluest_mag`` is the bluest colour of a star, ``reach_mag`` how far from its colour it may be catalogued. They start so that the first finite edge of the bins meets edges of the colour cells.
+    ``bluest_mag`` is the bluest colour of a star, ``reach_mag`` how far from its colour it may be catalogued. They
+    start so that the first finite edge of the bins meets edges of the colour cells.
     """
     finite = edges_colour_mag[np.isfinite(edges_colour_mag)]
     offset = 0.0 if not finite.size else (finite[0] - stars.C_EDGES_MAG[0]) % CELL_MAG
