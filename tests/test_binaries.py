@@ -57,3 +57,12 @@ def test_gain_falls_with_distance_and_with_the_blur():
     assert (np.diff(gain, axis=0) <= 0).all()
     assert (gain >= 1).all()
     assert_allclose(resolved_gain(MAGNITUDES, d_pc / 2, 1.2), gain, rtol=1e-12)
+
+
+def test_pairs_between_the_two_kinds_are_blended():
+    """Solar-type up to M_V = 8, M dwarfs from 10.5 with 84 % of the axes within one spread; between them, a blend."""
+    one_spread_au = 5.3 * 10 ** (2 / 3 * 1.3) / 1.26
+    assert_allclose(unresolved_share([10.5, 15.0], one_spread_au), 0.8413, atol=1e-4)
+    assert_allclose(unresolved_share([0.0, 8.0], 1000.0), 0.821, atol=1e-3)
+    log_median_au = np.array([2 / 3 * (5.03 - np.log10(365.25)) + np.log10(1.5) / 3, np.log10(5.3)])
+    assert_allclose(unresolved_share(9.25, 10 ** log_median_au.mean() / 1.26), 0.5, atol=1e-9)

@@ -11,7 +11,10 @@ from starcount.dust import band_coefficients
 from starcount.errors import InputError
 from starcount.forward import ForwardModel, layer_functions
 from starcount.forward.kernels import stars_on_grid
+from starcount.forward.kernels.products import meeting
 from starcount.galaxy import read_galaxy
+from starcount.stars.binaries import resolved_gain
+from starcount.stars.own import M_V_of_dwarfs
 from starcount.survey import Completeness, Observation
 from starcount.survey.curves import ColourError
 
@@ -233,3 +236,45 @@ def test_companions_belong_to_dwarfs(default, fields):
             assert (sharp[component, name] >= counts).all()
         else:
             assert_allclose(sharp[component, name], counts, rtol=1e-12)
+
+
+def test_stars_redder_than_the_last_slab_stay_on_it(default):
+    """In the plane: none is lost, and an edge at 6, for which the slabs reach farther, changes no bluer bin."""
+    fields = skies.circles(30, 0, 0.1)
+
+    def counts(*edges):
+        more = {"colour": GAIA, "edges_colour_mag": np.array([-np.inf, *edges, np.inf])} if edges else {}
+        return ForwardModel(skies.survey(fields, EDGES, "G", **more), default).groups[0].expected().reshape(6, -1)
+
+    near, far, whole = counts(0.3), counts(0.3, 6.0), counts()
+    assert_allclose(near.sum(axis=1), whole[:, 0], rtol=1e-10)
+    assert_allclose(near[:, 0], far[:, 0], rtol=1e-6, atol=1e-8 * whole.max())
+
+
+def test_resolved_pairs_by_cell(default):
+    """A bin of one cell grows by the gain of a dwarf's M_V at the distance of its shift: up to 7 %, to 0.01."""
+    edges, at = np.array([15.0, 15.05]), skies.circles(0, 60)
+    groups = [
+        ForwardModel(skies.survey(at, edges, "Ks", **more), default).groups[0]
+        for more in ({}, {"resolution_arcsec": 0.05})
+    ]
+    y = groups[0].projection.y_mag
+    plain, sharp = (group.luminosity_matrix().reshape(y.size, -1).sum(axis=1) for group in groups)
+    some = np.flatnonzero((15.0 - y > 3.0) & (15.0 - y < 8.0))
+    wanted = resolved_gain(M_V_of_dwarfs("Ks", 15.025 - y[some]), 10 ** (y[some] / 5 + 1), 0.05)
+    assert_allclose(sharp[some] / plain[some], wanted, atol=0.01)
+
+
+def test_classes_with_factors_sum_to_the_whole(default):
+    """Split by class, the components keep their own factors on the functions: the thick disc's rises with M_V."""
+    group = ForwardModel(skies.survey(skies.circles(0, 60), EDGES, "V"), default).groups[0]
+    factors = np.ones((len(default.layers), 10))
+    factors[[c.name == "thick" for c, _ in default.layers]] = np.linspace(1.0, 2.0, 10)
+    by_class = group.expected(factors=factors, parts="class")
+    assert_allclose(sum(by_class.values()), group.expected(factors=factors), rtol=1e-9)
+
+
+def test_only_rows_of_the_matrix_are_met():
+    """A written part that reaches over the rows of the matrix on both sides meets only them: y 3 and 4, two layers."""
+    spans, kept, shape = np.array([[[1, 7]]]), np.array([[[10, 3, 5]]]), np.array([1, 1, 8, 2])
+    assert meeting(0, 0, spans, kept, shape) == (6, 10, 4)

@@ -340,3 +340,17 @@ def test_a_map_that_folds_is_softened():
     q = quadratic_map.QuadraticMap(np.zeros(3), np.eye(3), factor * S, factor)
     assert 0.0 < factor < 0.2
     assert np.mean(quadratic_map.folded(q, np.random.default_rng(1).standard_normal((2000, 3)))) < 0.01
+
+
+def test_the_model_expects_what_the_forward_model_does():
+    """Each layer has the curve of its kind, and the census is data: Poisson by scipy, away from the prior's centre."""
+    toy = toy_model()
+    built, rng = model.build_model(toy, likelihood="poisson", kernels=KERNELS), np.random.default_rng(4)
+    point = {name: 0.5 * rng.normal(size=np.shape(u)) for name, u in built.initial_point().items()}
+    names = [p.name for p in model.choose(toy.galaxy, None)]
+    outputs = built.replace_rvs_by_values([built[name] for name in (*names, "curve.disc", "curve.old")])
+    *values, disc, old = built.compile_fn(outputs)(point)
+    for name, group in (("G", toy.groups[0]), ("census", toy.census)):
+        expected = group.expected(dict(zip(names, values, strict=True)), factors=np.exp([disc, old]))
+        wanted = stats.poisson.logpmf(group.counts, np.maximum(expected, model.FEWEST)).sum()
+        assert_allclose(built.compile_logp(vars=[built[f"counts.{name}"]])(point), wanted, rtol=1e-9)

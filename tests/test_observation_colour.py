@@ -10,6 +10,7 @@ from scipy.stats import norm, truncnorm
 
 from starcount.errors import InputError
 from starcount.survey import ColourError, Completeness, FaintBP, Observation, PhotometricError
+from starcount.survey.faint_BP import flux_ratio
 
 CELLS_MAG = np.round(0.05 * np.arange(-30, 141), 10)
 EDGES_MAG = np.concatenate([[-np.inf], np.round(np.arange(-0.5, 4.05, 0.1), 10), [np.inf]])
@@ -192,3 +193,8 @@ def test_sixty_responses_are_fast():
     for k in range(60):
         observation.colour_response(nodes, CELLS_MAG + 0.05 * k, EDGES_MAG)
     assert time.thread_time() - start < 1.5
+
+
+def test_flux_excess_in_its_three_pieces():
+    """Riello et al. 2021, table 2, by hand: below BP - RP = 0.5, up to 4, beyond, and level from 7 on."""
+    assert_allclose(flux_ratio(np.array([-0.5, 2.0, 5.0, 9.0])), [1.145543, 1.33492, 1.760257, 2.041331], atol=1e-6)

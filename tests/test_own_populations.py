@@ -261,3 +261,26 @@ def test_a_class_that_its_colours_do_not_know_is_refused(tmp_path):
     assert_allclose(lf[CLASSES.index("horizontal branch")].sum(), 9 * 250.0, rtol=1e-12)
     with pytest.raises(InputError, match=r"stars of class 'horizontal branch' at M = 3\.02, but its locus does not"):
         stars.spread(stars.locus(path, "G"), lf[None], "G", None, ANY)
+
+
+def test_every_colour_of_a_table_has_its_own_temperature(tmp_path):
+    """Rows from 4000 to 6000 K: each colour cell has that of the row it lies in, whatever the others' numbers."""
+    table = colour_rows()
+    table["Teff"] = np.tile([6000.0, 5000.0, 4000.0], 3)
+    table["Teff"].unit = "K"
+    locus = stars.locus(write_own(tmp_path, COLOUR_TABLE, table), "G")
+    row = np.searchsorted([0.5, 0.8], locus.colour_mag("SDSS g", "SDSS r"))
+    assert_allclose(locus.Teff_K, np.array([6000.0, 5000.0, 4000.0])[row], rtol=1e-12)
+
+
+def test_only_dwarfs_of_isochrones_become_systems(tmp_path):
+    """Of single stars giants stay one object each; dwarfs of M_RP = 8 without V have the factor of their M_V = 9.9."""
+    given = {key: value for key, value in ISOCHRONES.items() if key != "counts"}
+    table = isochrone_rows()
+    table.remove_columns(["V", "G", "BP"])
+    for settings, name in ((ISOCHRONES, "systems"), (given, "singles")):
+        write_own(tmp_path, {**settings, "window": 0.1}, table, name=name)
+    systems, singles = (read_own(tmp_path / f"{name}.toml").per_star("G") for name in ("systems", "singles"))
+    giants, at = CLASSES.index("red giant"), cell_range(8, 8.05)
+    assert_allclose(singles[giants].sum(), systems[giants].sum(), rtol=1e-12)
+    assert_allclose(singles[0, at] / systems[0, at], 0.863, atol=0.002)

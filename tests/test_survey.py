@@ -186,7 +186,8 @@ def group(draw, name):
     return make_group(name, band, edges_mag, fields, counts, used, **colour, **more)
 
 
-colour_edges = st.tuples(st.booleans(), st.lists(magnitudes, min_size=2, max_size=4, unique=True), st.booleans()).map(
+colours = st.floats(-1.0, 11.0).map(lambda c: round(c, 3))
+colour_edges = st.tuples(st.booleans(), st.lists(colours, min_size=2, max_size=4, unique=True), st.booleans()).map(
     lambda x: [-np.inf] * x[0] + sorted(x[1]) + [np.inf] * x[2]
 )
 wide, twice = np.array([-60.0, 60.0]), np.array([[0.1, 0.2], [0.3, 1.0]])

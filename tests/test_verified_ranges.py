@@ -5,11 +5,12 @@ from importlib.resources import files
 
 import numpy as np
 from astropy.table import Table
-from numpy.testing import assert_allclose
+from numpy.testing import assert_allclose, assert_array_equal
 
 from starcount import stars
 from starcount.forward.tables import StarTables
 from starcount.galaxy import read_galaxy
+from starcount.stars import tracks
 
 
 @cache
@@ -66,3 +67,16 @@ def test_bands_count_one_by_one():
     for colour in (None, ("G", "RP")):
         outside = StarTables(read_galaxy("default"), "G", colour, np.array([5800.0])).outside()
         assert (outside.sum() > 0) == (colour is not None)
+
+
+def test_old_populations_have_no_young_giants():
+    """Giants of 5 Gyr and older of solar metallicity, at M_V = 0, are 126 K cooler than those of all ages."""
+    at = np.searchsorted(stars.M_EDGES_MAG, 0.0)
+    young, old = (tracks.branch("red giant", 0.0, age, "V") for age in (0.0, 5.0))
+    assert np.exp(old.look[0, :, at]).mean() < np.exp(young.look[0, :, at]).mean() - 50.0
+
+
+def test_a_kind_is_known_as_badly_as_its_worst_star():
+    """Six equal stars in three kinds by temperature: the larger error of each pair, nan where one has none."""
+    look, error = np.arange(6.0)[None], np.array([[0.1, 0.2, 0.3, 0.1, np.nan, 0.1]])
+    assert_array_equal(tracks._kinds(np.ones(6), look, error)[1], [[0.2, 0.3, np.nan]])
