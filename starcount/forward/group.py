@@ -16,6 +16,7 @@ from starcount.forward.response import Y_STEP_MAG, Response, excess_grid, make_r
 from starcount.forward.ribbon import shift_ranges
 from starcount.forward.tables import StarTables
 from starcount.galaxy import Galaxy
+from starcount.stars.own import M_V_of_dwarfs
 from starcount.survey import Group
 
 ACCURACY = 5e-5
@@ -108,7 +109,7 @@ def make_group_model(group: Group, galaxy: Galaxy, accuracy: float = ACCURACY, d
     reach = _layer_reach(group, tables)
     lines = _settled_lines(group, galaxy, tables, reddening, reach, accuracy, dust_range)
     y = _y_grid(group, tables, (lines.mu_mag.min(), (lines.mu_mag + dust_range * lines.A_mag).max()))
-    response = make_response(group, y, _excess_grid(group, tables, lines, dust_range), _gain(group, tables, y))
+    response = make_response(group, y, _excess_grid(group, tables, lines, dust_range), _gain(group, y))
     grid, names = Grid(y, response.excess_mag), tuple(group.extra)
     ranges = None if group.colour is None else shift_ranges(lines, grid, dust_range)
     if names and group.colour is not None:
@@ -172,7 +173,7 @@ def _excess_grid(group: Group, tables: StarTables, lines: Lines, dust_range: flo
     return excess_grid(dust_range * lines.E_mag.max(), group.edges_colour_mag, bluest, reach)
 
 
-def _gain(group: Group, tables: StarTables, y_mag: np.ndarray) -> np.ndarray | None:
+def _gain(group: Group, y_mag: np.ndarray) -> np.ndarray | None:
     """How many objects beyond one a system of each cell counts as (y, cell), where the survey resolves the wider ones.
 
     The distance is that of a star without extinction, so that it is a function of the shift: behind A = 1 mag it is
@@ -180,7 +181,7 @@ def _gain(group: Group, tables: StarTables, y_mag: np.ndarray) -> np.ndarray | N
     """
     if group.resolution_arcsec is None:
         return None
-    M_V = tables.dwarfs_M_V()
+    M_V = M_V_of_dwarfs(group.band, stars.M_MIDDLE_MAG)
     gain = [stars.resolved_gain(M_V, 10 ** (y / 5 + 1), group.resolution_arcsec) for y in y_mag]
     return np.array(gain) - 1.0
 

@@ -137,8 +137,7 @@ def _in_band(shares: np.ndarray, locus: stars.Locus) -> np.ndarray:
 
     A population that does not say where it is in V has its limits in its own band.
     """
-    M_V = np.where(np.isfinite(locus.M_V_mag), locus.M_V_mag, locus.middle_mag)
-    at = np.clip(np.searchsorted(stars.M_EDGES_MAG, M_V, side="right") - 1, 0, shares.shape[2] - 1)
+    at = np.clip(np.searchsorted(stars.M_EDGES_MAG, locus.M_V_mag, side="right") - 1, 0, shares.shape[2] - 1)
     found, total = np.zeros_like(shares), np.zeros(shares.shape[1:])
     place = locus.class_index, locus.cell
     np.add.at(total, place, locus.share)

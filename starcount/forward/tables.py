@@ -93,15 +93,6 @@ class StarTables:
             np.add.at(found[row], (locus.class_index, locus.cell), share)
         return self.lf * found
 
-    def dwarfs_M_V(self) -> np.ndarray:
-        """Return the absolute visual magnitude (cell,) of a nearby dwarf in each cell of the band."""
-        locus = stars.locus("census", self.reference)
-        dwarf = (locus.class_index == stars.CLASSES.index("dwarf")) & np.isfinite(locus.M_mag[self.band])
-        order = np.argsort(locus.M_mag[self.band][dwarf])
-        M_mag, M_V = (locus.M_mag[name][dwarf][order] for name in (self.band, "V"))
-        middle = (stars.M_EDGES_MAG[1:] + stars.M_EDGES_MAG[:-1]) / 2
-        return np.interp(middle, M_mag, M_V)
-
     def outside(self) -> np.ndarray:
         """Return the table of the stars whose magnitudes rest on relations outside their verified range.
 
