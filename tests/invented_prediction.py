@@ -32,7 +32,7 @@ class FakeGroupModel:
     group: Group
     disc: np.ndarray
     halo: np.ndarray
-    outside: float | None = None
+    outside: np.ndarray | None = None
     extra_names = ("galaxies",)
     galaxy = SimpleNamespace(layers=LAYERS)
 
@@ -58,7 +58,7 @@ def group_model(group, outside=None):
     sin_b = np.abs(np.sin(np.radians(group.fields.b_deg)))[:, None]
     disc = 400 * 10 ** (0.25 * (middle - 14)) / (0.15 + sin_b) * _colours(bins, 0.9 + 0.1 * (middle - 14), 0.45)
     halo = np.broadcast_to(40 * 10 ** (0.3 * (middle - 14)) * _colours(bins, 0.8, 0.2), disc.shape)
-    return FakeGroupModel(group, disc, halo, outside)
+    return FakeGroupModel(group, disc, halo, None if outside is None else np.full(len(disc), outside))
 
 
 def _colours(bins, mean_mag, sd_mag):

@@ -52,6 +52,17 @@ def test_a_temperature_that_no_star_has_is_refused(tmp_path, Teff_K):
     assert message in one_line(tmp_path, ISOCHRONES, table)
 
 
+def test_an_age_in_the_place_of_its_logarithm_is_refused(tmp_path):
+    """Ten billion years in the column log_age."""
+    table = isochrone_rows()
+    table["log_age"] = 10.0
+    table["log_age"][4] = 1e10
+    if "age" in table.colnames:
+        table.remove_column("age")
+    found = lines(tmp_path, ISOCHRONES, table)
+    assert any("row 5, log_age: 1e+10; expected 5 to 10.5" in line for line in found)
+
+
 def test_a_temperature_in_the_place_of_its_logarithm_is_refused(tmp_path):
     """5000 in the column log_Teff, which 10^5000 K would be."""
     table = isochrone_rows()

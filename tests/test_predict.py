@@ -254,6 +254,14 @@ def test_stars_outside_verified_ranges_are_a_caution_from_one_per_cent_on(survey
     assert "group all: 3.2 % of the expected stars" in cautions[0]
 
 
+def test_a_dense_field_does_not_hide_the_others(survey):
+    """A third of one field's stars is said with its name, however little it is of the group's."""
+    names = survey.groups[0].fields.name
+    shares = np.where(np.arange(names.size) == 3, 0.33, 0.0)
+    (caution,) = predict_counts(invented.model(survey, shares)).cautions()
+    assert f"most in field {names[3]}, 33 %" in caution
+
+
 def _emptied(survey, keep):
     """The caution of a prediction without the stars and galaxies of the bins where ``keep`` (m, c) is zero."""
     group = survey.groups[0]

@@ -75,13 +75,13 @@ class GroupModel:
         return {**found, **{(name, ""): counts for name, counts in zip(self.extra_names, self.extra, strict=True)}}
 
     @property
-    def outside(self) -> float:
-        """The share of the expected stars whose magnitudes rest on relations outside their verified range."""
+    def outside(self) -> np.ndarray:
+        """The share (field,) of the expected stars whose magnitudes rest on relations outside their verified range."""
         v = self.galaxy.vector()
-        counted = self.projection.counts(v, self.matrix.whole).sum()
-        return (
-            float(self.projection.counts(v, self.matrix.of(self.tables.outside())).sum() / counted) if counted else 0.0
+        counted, doubtful = (
+            self._counts(v, W).sum(axis=1) for W in (self.matrix.whole, self.matrix.of(self.tables.outside()))
         )
+        return doubtful / np.where(counted > 0, counted, 1.0)
 
     def _by_component(self, v: np.ndarray, W: np.ndarray) -> dict[str, np.ndarray]:
         found = {}

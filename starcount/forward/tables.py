@@ -11,6 +11,7 @@ from functools import cached_property
 import numpy as np
 
 from starcount import stars
+from starcount.errors import InputError
 from starcount.forward.knots import hat
 from starcount.forward.luminosity import layer_functions, population_name
 from starcount.galaxy import Galaxy
@@ -68,7 +69,11 @@ class StarTables:
             mine = np.array([c is component for c, _ in self.galaxy.layers])
             locus = self.loci[component.name]
             factor = None if weight is None else weight(locus, int(np.argmax(mine)))
-            found.append(stars.spread(locus, lf[mine], self.band, self.colour, self.temperatures_K, factor))
+            try:
+                found.append(stars.spread(locus, lf[mine], self.band, self.colour, self.temperatures_K, factor))
+            except InputError as problem:
+                where = f"component {component.name!r}, population {component.population!r}"
+                raise InputError(f"{where}: {problem}") from None
         return np.concatenate(found)
 
     def at_knot(self, knot: int | None) -> np.ndarray:

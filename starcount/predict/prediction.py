@@ -16,7 +16,7 @@ if TYPE_CHECKING:
     from starcount.survey import Group, Survey
 
 OUTSIDE_SHARE = 0.01
-"""A group is named in a caution when more of its stars than this rest on relations outside their range."""
+"""A group is named in a caution when more of a field's stars than this rest on relations outside their range."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -26,8 +26,8 @@ class GroupPrediction:
     ``parts`` holds one array per component and extra row, which sum to ``expected``; ``classes``, where it was asked
     for, one per (component, star class). ``draws`` are expected counts; ``counted`` are counts drawn around them, with
     Poisson noise and the fitted floor. ``floor`` is the fractional scatter of the counts beyond Poisson (0: none), one
-    per draw. ``outside`` is the share of the expected stars whose magnitudes rest on relations outside the range that
-    their sources verified; None where it is not known.
+    per draw. ``outside`` is the share of each field's stars (field,) whose magnitudes rest on relations outside the
+    range that their sources verified; None where it is not known.
     """
 
     group: Group
@@ -37,7 +37,7 @@ class GroupPrediction:
     counted: np.ndarray | None = None
     floor: np.ndarray | None = None
     classes: Mapping[tuple[str, str], np.ndarray] = field(default_factory=dict)
-    outside: float | None = None
+    outside: np.ndarray | None = None
 
     @property
     def compared(self) -> np.ndarray:
@@ -148,14 +148,24 @@ class Prediction:
     def cautions(self) -> list[str]:
         """What to know before using the numbers: bins without stars, groups of which more than a little is
         extrapolated."""
-        extrapolated = [
-            f"group {name}: {100 * group.outside:.2g} % of the expected stars rest on magnitude relations outside the "
-            "range that their sources verified"
-            for name, group in self.groups.items()
-            if group.outside is not None and group.outside > OUTSIDE_SHARE
-        ]
+        extrapolated = (_caution_of_relations(name, group) for name, group in self.groups.items())
         without_stars = (caution_of_empty_bins(group.group, group.expected) for group in self.groups.values())
-        return [*filter(None, without_stars), *extrapolated]
+        return [*filter(None, [*without_stars, *extrapolated])]
+
+
+def _caution_of_relations(name: str, group: GroupPrediction) -> str:
+    """How much of a group's stars rests on relations outside their range, and in which field most; '' if little does.
+
+    Field by field, so that one dense field does not hide the others.
+    """
+    if group.outside is None or not (group.outside > OUTSIDE_SHARE).any():
+        return ""
+    worst, stars = int(np.argmax(group.outside)), group.expected.sum(axis=1)
+    return (
+        f"group {name}: {100 * group.outside @ stars / stars.sum():.2g} % of the expected stars rest on magnitude "
+        f"relations outside the range that their sources verified; most in field {group.group.fields.name[worst]}, "
+        f"{100 * group.outside[worst]:.2g} %"
+    )
 
 
 def _least_probable(table: QTable, number: int) -> QTable:

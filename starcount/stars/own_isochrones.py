@@ -18,6 +18,10 @@ from starcount.stars.own_functions import metallicity_setting
 from starcount.stars.phases import LEFT_OUT, classes_by_phase, classes_by_shape
 
 SCATTER_MAG = 0.04
+
+LOG_AGE_RANGE = (5.0, 10.5)
+"""Of years: from 100 000 to twice the age of the universe; ages themselves in the column are none of these."""
+
 """What rotation, companions and photometry of the templates leave about an isochrone; adopted, not measured."""
 
 
@@ -124,7 +128,9 @@ def _Teff_K(own: OwnFile) -> np.ndarray:
 def _age_Gyr(own: OwnFile) -> np.ndarray:
     """Return the ages; rounded, so that one age is one number in all rows."""
     if "log_age" in own.table.colnames:
-        return 10 ** (np.round(_plain(own, "log_age"), 6) - 9)
+        log_age = _plain(own, "log_age")
+        own.beyond("log_age", log_age, *LOG_AGE_RANGE, "")
+        return 10 ** (np.round(np.clip(log_age, *LOG_AGE_RANGE), 6) - 9)  # what is beyond was noted
     age = numbers(own.table, "age", "Gyr", own.table_file, own.problems)
     none = np.flatnonzero(age <= 0)
     own.wrong_rows("age", none, age[none], "more than 0 Gyr")

@@ -1,5 +1,6 @@
 """Populations by name or path: their luminosity functions and loci."""
 
+from collections.abc import Iterable
 from importlib.resources import files
 from pathlib import Path
 
@@ -36,7 +37,7 @@ def population(name_or_path: str | Path, reference: str) -> np.ndarray:
     if name_or_path in POPULATIONS:
         lf = our_table(name_or_path).per_star(reference)
         return lf if reference == "V" else lf / _window(lf, locus(name_or_path, reference))
-    return _own(name_or_path).per_star(reference)
+    return _own(name_or_path, POPULATIONS).per_star(reference)
 
 
 def locus(name_or_path: str | Path, reference: str) -> Locus:
@@ -46,7 +47,7 @@ def locus(name_or_path: str | Path, reference: str) -> Locus:
     """
     if name_or_path in METALLICITY:
         return named_locus(str(name_or_path), reference)
-    return _own(name_or_path).locus(reference)
+    return _own(name_or_path, METALLICITY).locus(reference)
 
 
 def _window(lf: np.ndarray, locus: Locus) -> float:
@@ -68,8 +69,8 @@ def class_fractions(lf: np.ndarray) -> dict[str, float]:
     return dict(zip(CLASSES, map(float, stars / stars.sum()), strict=True))
 
 
-def _own(name_or_path: str | Path) -> Own:
+def _own(name_or_path: str | Path, known: Iterable[str]) -> Own:
     require_not_absent(str(name_or_path))
     if Path(name_or_path).suffix not in {".toml", ".ecsv"}:
-        raise UnknownName("population", str(name_or_path), (*POPULATIONS, "PATH.toml", "PATH.ecsv"))
+        raise UnknownName("population", str(name_or_path), (*known, "PATH.toml", "PATH.ecsv"))
     return read_own(Path(name_or_path))

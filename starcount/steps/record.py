@@ -121,7 +121,7 @@ def of_prediction(prediction) -> dict:
             "expected": float(group.expected.sum()),
             "parts": {part: float(counts.sum()) for part, counts in group.parts.items()},
             "classes": _by_class(group.classes),
-            "outside": group.outside,
+            "outside": None if group.outside is None else float(group.outside.max()),
             "counted": int(group.group.counts[compared].sum()) if compared.any() else None,
             "expected_of_counted": float(group.expected[compared].sum()) if compared.any() else None,
         }
