@@ -77,6 +77,8 @@ class GroupModel:
     @property
     def outside(self) -> np.ndarray:
         """The share (field,) of the expected stars whose magnitudes rest on relations outside their verified range."""
+        if self.tables.colour is None and self.tables.band == self.tables.reference:
+            return np.zeros(len(self.used))  # counted in this band: they rest on no relation
         v = self.galaxy.vector()
         counted, doubtful = (
             self._counts(v, W).sum(axis=1) for W in (self.matrix.whole, self.matrix.of(self.tables.outside()))

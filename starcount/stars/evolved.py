@@ -1,5 +1,6 @@
 """Evolved stars by class: what the census counts together, split by a model and by counts."""
 
+from functools import cache
 from importlib.resources import files
 
 import numpy as np
@@ -18,6 +19,7 @@ def require_reference(band: str) -> None:
         raise InputError(f"band {band!r} is not a reference band: functions are counted in V and G, others are spread")
 
 
+@cache
 def evolved_split(reference: str) -> np.ndarray:
     """Return the share (class, cell) of each class in the evolved stars of the thin disc, from a table with sources.
 
@@ -29,4 +31,6 @@ def evolved_split(reference: str) -> np.ndarray:
     split = np.zeros((len(CLASSES), M_MIDDLE_MAG.size))
     for name in ("subgiant", "red giant", "clump"):
         split[CLASSES.index(name)] = np.interp(M_MIDDLE_MAG, table["M"], table[name])
-    return split / split.sum(axis=0)
+    split /= split.sum(axis=0)
+    split.setflags(write=False)
+    return split

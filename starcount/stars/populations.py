@@ -1,6 +1,7 @@
 """Populations by name or path: their luminosity functions and loci."""
 
 from collections.abc import Iterable
+from functools import cache
 from importlib.resources import files
 from pathlib import Path
 
@@ -35,8 +36,7 @@ def population(name_or_path: str | Path, reference: str) -> np.ndarray:
     require_band(reference)
     require_reference(reference)
     if name_or_path in POPULATIONS:
-        lf = our_table(name_or_path).per_star(reference)
-        return lf if reference == "V" else lf / _window(lf, locus(name_or_path, reference))
+        return _ours(str(name_or_path), reference)
     return _own(name_or_path, POPULATIONS).per_star(reference)
 
 
@@ -48,6 +48,15 @@ def locus(name_or_path: str | Path, reference: str) -> Locus:
     if name_or_path in METALLICITY:
         return named_locus(str(name_or_path), reference)
     return _own(name_or_path, METALLICITY).locus(reference)
+
+
+@cache
+def _ours(name: str, reference: str) -> np.ndarray:
+    lf = our_table(name).per_star(reference)
+    if reference != "V":
+        lf = lf / _window(lf, locus(name, reference))
+    lf.setflags(write=False)
+    return lf
 
 
 def _window(lf: np.ndarray, locus: Locus) -> float:
