@@ -7,6 +7,7 @@ projection that predicts the sky then predicts the mean number density in the sp
 import numpy as np
 
 from starcount import stars
+from starcount.dust.bands import FLAT_TEMPERATURE_K
 from starcount.forward.group import GroupModel
 from starcount.forward.luminosity import sphere_points
 from starcount.forward.matrix import LuminosityMatrix
@@ -25,7 +26,7 @@ def make_census_model(galaxy: Galaxy, reference: str) -> GroupModel:
     used = np.zeros((radii.size, census.n.size), bool)
     used[field, np.arange(census.n.size)] = True
     n_layer = len(galaxy.layers)
-    tables = StarTables(galaxy, reference, None, np.array([5800.0]))
+    tables = StarTables(galaxy, reference, None, np.array([FLAT_TEMPERATURE_K]))
     lines, grid = _spheres(galaxy, radii), Grid(_Y_MAG, np.zeros(1))
     reach = np.tile([-1.0, 1.0], (n_layer, 1))
     return GroupModel(

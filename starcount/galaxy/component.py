@@ -5,7 +5,6 @@ from dataclasses import dataclass, field
 
 from starcount.galaxy.law import Law
 
-ANCHORS = ("sun", "total")
 PRIORS = ("lognormal", "normal")
 
 

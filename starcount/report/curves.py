@@ -28,5 +28,5 @@ def _draw_curve(axes, curve: CurveDraws) -> None:
     for edge, label in zip(np.percentile(curve.prior_draws, [2.5, 97.5], axis=0), ("prior, 95 %", None), strict=True):
         axes.plot(curve.knots_mag, edge, color=BLACK, linestyle=(0, (4, 2)), label=label)
     axes.set_xticks(curve.knots_mag[::2])
-    axes.set_xlabel("absolute magnitude [mag]")
+    axes.set_xlabel("absolute visual magnitude [mag]")
     axes.set_title(f"{curve.name}: {', '.join(curve.components)}", loc="left", parse_math=False)

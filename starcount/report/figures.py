@@ -104,10 +104,10 @@ FIGURES = {
     "curves": FigureKind(
         curves.luminosity_curves,
         lambda content: ("",) if content.curves else (),
-        caption="ln of the factor that the fit puts on the luminosity functions, against absolute magnitude. Filled: "
+        caption="ln of the factor that the fit puts on the luminosity functions, against M_V. Filled: "
         "68 and 95 % of the draws; broken lines: 95 % of the prior. A curve far from zero says that a table or the "
         "densities are wrong.",
-        alt="Fitted corrections of the luminosity functions against absolute magnitude",
+        alt="Fitted corrections of the luminosity functions against absolute visual magnitude",
     ),
     "recovery": FigureKind(
         posteriors.recovery,
